@@ -1,0 +1,1 @@
+"""Work that brings figures up to date, and its schedule."""

@@ -1,0 +1,1 @@
+"""Readings and a position to harvest figures. Pure computation on arrays."""

@@ -1,0 +1,1 @@
+"""The only package that speaks SQL. One module a family of queries; one writer; readers read only."""

@@ -1,0 +1,1 @@
+"""Pages and the JSON interface. The only package that imports Flask."""
