@@ -1,0 +1,21 @@
+"""${message}
+
+House rules: name every constraint; touch data only with SQL written here, never through hub.store.tables, which moves on;
+count rows before and after when a table is rebuilt.
+"""
+
+import sqlalchemy as sa
+from alembic import op
+${imports if imports else ""}
+revision = ${repr(up_revision)}
+down_revision = ${repr(down_revision)}
+branch_labels = ${repr(branch_labels)}
+depends_on = ${repr(depends_on)}
+
+
+def upgrade() -> None:
+    ${upgrades if upgrades else "pass"}
+
+
+def downgrade() -> None:
+    ${downgrades if downgrades else "pass"}
