@@ -68,9 +68,7 @@ def unpack(data: bytes, names: Collection[str] | None = None) -> Columns:
     if data[:3] != MAGIC:
         raise ValueError("not a block of readings")
     start = 7 + int.from_bytes(data[3:7], "little")
-    count, directory = msgspec.msgpack.decode(
-        data[7:start], type=tuple[int, list[tuple[str, int, int, int, int]]]
-    )
+    count, directory = msgspec.msgpack.decode(data[7:start], type=tuple[int, list[tuple[str, int, int, int, int]]])
     values: dict[str, Ints] = {}
     present: dict[str, Present] = {}
     for name, steps, width, mapped_bytes, stored_bytes in directory:

@@ -87,16 +87,14 @@ def _engine(url: str, *, writing: bool, checkpoints: bool) -> Engine:
     timeout = WRITER_TIMEOUT_S if writing else READER_TIMEOUT_S
     arguments: dict[str, Any] = {"timeout": timeout, "check_same_thread": False}
     if writing:
-        engine = create_engine(
-            url, pool_size=1, max_overflow=0, pool_timeout=WRITER_TIMEOUT_S, connect_args=arguments
-        )
+        engine = create_engine(url, pool_size=1, max_overflow=0, pool_timeout=WRITER_TIMEOUT_S, connect_args=arguments)
     else:
         # A reader is opened for one question and closed after it: a reader left open keeps the log from shrinking.
         engine = create_engine(url, poolclass=NullPool, connect_args=arguments)
 
     @event.listens_for(engine, "connect")
     def _prepare(connection: sqlite3.Connection, _record: object) -> None:
-        # The driver must not begin transactions by itself: it would skip BEGIN before DDL, and pragmas would do nothing.
+        # The driver must not begin transactions itself: it skips BEGIN before DDL, and pragmas would do nothing.
         connection.isolation_level = None
         cursor = connection.cursor()
         cursor.execute("PRAGMA foreign_keys=ON")

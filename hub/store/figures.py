@@ -91,9 +91,7 @@ def clear(connection: Connection, node_id: int, start_ms: int, end_ms: int) -> N
     """Forget what was computed for windows that begin in a stretch of time."""
     for table in _FIGURES:
         connection.execute(
-            delete(table).where(
-                table.c.node_id == node_id, table.c.start_ms >= start_ms, table.c.start_ms < end_ms
-            )
+            delete(table).where(table.c.node_id == node_id, table.c.start_ms >= start_ms, table.c.start_ms < end_ms)
         )
     c = t.charge_figure.c
     connection.execute(
@@ -101,9 +99,7 @@ def clear(connection: Connection, node_id: int, start_ms: int, end_ms: int) -> N
     )
 
 
-def days(
-    connection: Connection, node_id: int, since: str | None = None, until: str | None = None
-) -> list[RowMapping]:
+def days(connection: Connection, node_id: int, since: str | None = None, until: str | None = None) -> list[RowMapping]:
     """Day figures of a node in order of time, with the pack's label as ``pack``; dates are inclusive."""
     d = t.day_figure.c
     query = (
@@ -155,6 +151,8 @@ def pack_days(connection: Connection, pack_id: int) -> list[RowMapping]:
     """Discharged charge of a pack by local date, over all nodes it was in."""
     d = t.day_figure.c
     query = (
-        select(d.date, d.discharge_ah).where(d.pack_id == pack_id, d.discharge_ah.is_not(None)).order_by(d.date, d.start_ms)
+        select(d.date, d.discharge_ah)
+        .where(d.pack_id == pack_id, d.discharge_ah.is_not(None))
+        .order_by(d.date, d.start_ms)
     )
     return list(connection.execute(query).mappings())

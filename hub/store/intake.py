@@ -144,4 +144,4 @@ def unknown_names(connection: Connection, node_id: int) -> dict[str, int]:
     rows = connection.execute(
         t.unknown_name.select().where(t.unknown_name.c.node_id == node_id).order_by(t.unknown_name.c.name)
     )
-    return {row.name: row.count for row in rows}
+    return {row["name"]: row["count"] for row in rows.mappings()}

@@ -24,7 +24,7 @@ class Site:
 
 @dataclass(frozen=True, slots=True)
 class Node:
-    """A charging device at a site. Accuracies are standard uncertainties; ``None`` takes the default for common parts."""
+    """A charging device at a site. Accuracies are standard uncertainties; ``None``: as common parts have."""
 
     name: str
     site: str
@@ -66,7 +66,7 @@ class Fitting:
 
 @dataclass(frozen=True, slots=True)
 class Calibration:
-    """From ``start_ms`` on, a value is the reading times ``gain`` plus ``offset``, until the next one of the quantity."""
+    """From ``start_ms`` to the next one of its quantity, a value is the reading times ``gain`` plus ``offset``."""
 
     node: str
     quantity: str

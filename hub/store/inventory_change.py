@@ -97,7 +97,9 @@ def _check_references(inventory: Inventory) -> None:
     packs = {p.label for p in inventory.packs}
     for node in inventory.nodes:
         if node.site not in sites:
-            raise InventoryError(f"Node {node.name} stands at “{node.site}”, but there is no such site. Add a [[site]].")
+            raise InventoryError(
+                f"Node {node.name} stands at “{node.site}”, but there is no such site. Add a [[site]]."
+            )
     for fitting in inventory.fittings:
         if fitting.node not in nodes:
             raise InventoryError(f"A fitting names node “{fitting.node}”, but there is no such node. Add a [[node]].")
@@ -142,9 +144,7 @@ def differences(known: Inventory, wanted: Inventory) -> list[Change]:
             old = before.get(key, {})
             changed = {name: value for name, value in after.items() if not old or old[name] != value}
             if changed:
-                changes.append(
-                    Change(kind, _named(entry), {n: old[n] for n in changed} if old else {}, changed)
-                )
+                changes.append(Change(kind, _named(entry), {n: old[n] for n in changed} if old else {}, changed))
     return changes
 
 

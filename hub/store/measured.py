@@ -37,6 +37,4 @@ def read(
 ) -> Screened:
     """A node's readings of a stretch, with what screening found and kept out."""
     wide = readings.read(connection, node_id, start_ms - SURROUNDINGS_MS, end_ms + SURROUNDINGS_MS)
-    return screen(calibrated(wide, calibrations), full_scale_current_a=full_scale_current_a).between(
-        start_ms, end_ms
-    )
+    return screen(calibrated(wide, calibrations), full_scale_current_a=full_scale_current_a).between(start_ms, end_ms)

@@ -28,6 +28,8 @@ class Remark:
         What was said, where it concerns one value.
     line
         Physical line number in a file, counted from 1.
+    values
+        All values of the reading, where a whole reading was set aside.
     """
 
     reason: str
@@ -36,6 +38,7 @@ class Remark:
     quantity: str | None = None
     value: float | None = None
     line: int | None = None
+    values: Values | None = None
 
 
 @dataclass(slots=True)
@@ -52,6 +55,8 @@ class Message:
         Names that are not in the catalogue, with how often each came.
     remarks
         Parts that were set aside.
+    ignored
+        Records that carry no number: text, truth values, data, or a sum without a value.
     """
 
     readings: dict[int, Values] = field(default_factory=dict)
@@ -60,3 +65,4 @@ class Message:
     oldest: int | None = None
     unknown: dict[str, int] = field(default_factory=dict)
     remarks: list[Remark] = field(default_factory=list)
+    ignored: int = 0
