@@ -23,6 +23,7 @@ __all__ = [
     "Outcome",
     "append",
     "bounds",
+    "changed_hours",
     "count",
     "fixed_point",
     "newest_revision",
@@ -159,3 +160,12 @@ def newest_revision(connection: Connection, node_id: int, start_ms: int, end_ms:
         )
     ).scalar()
     return int(found or 0)
+
+
+def changed_hours(connection: Connection, node_id: int) -> tuple[list[int], list[int]]:
+    """UTC hours in which a node's readings changed, in order, and the revision of each hour's latest change."""
+    m = t.reading_mark.c
+    found = connection.execute(
+        select(m.utc_hour, m.revision).where(m.node_id == node_id).order_by(m.utc_hour)
+    ).fetchall()
+    return [row[0] for row in found], [row[1] for row in found]
