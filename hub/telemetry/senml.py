@@ -144,9 +144,6 @@ _PLAIN_JSON: Final = msgspec.json.Decoder(list[_Plain])
 _PLAIN_LABELS: Final = frozenset({-4, -3, -2, 0, 1, 2, 6})
 _NUMBERS: Final = frozenset({int, float})
 
-# Base name, base time, base unit, name, unit, value, time: base fields are None where the record has none.
-_Row = tuple[str | None, float | None, str | None, str, str | None, float, float]
-
 
 class _NotPlainError(Exception):
     """The pack uses more of the standard than the fast path knows."""
@@ -159,19 +156,19 @@ def _plain_json(payload: bytes, received_ms: int) -> Message | None:
         return None
     _check_size(records)
     try:
-        return _fold(((r.bn, r.bt, r.bu, r.n, r.u, r.v, r.t) for r in records), received_ms, Message())
+        return _fold(records, received_ms, Message())
     except _NotPlainError:
         return None
 
 
 def _plain_cbor(pack: list[Any], received_ms: int) -> Message | None:
     try:
-        return _fold(_cbor_rows(pack), received_ms, Message())
+        return _fold(_cbor_records(pack), received_ms, Message())
     except (_NotPlainError, TypeError):
         return None
 
 
-def _cbor_rows(pack: list[Any]) -> Iterator[_Row]:
+def _cbor_records(pack: list[Any]) -> Iterator[_Plain]:
     for record in pack:
         if type(record) is not dict or not record.keys() <= _PLAIN_LABELS:
             raise _NotPlainError
@@ -181,25 +178,27 @@ def _cbor_rows(pack: list[Any]) -> Iterator[_Row]:
             raise _NotPlainError
         if bt is not None and type(bt) not in _NUMBERS:
             raise _NotPlainError
-        yield get(-2), bt, get(-4), name, unit, value, time
+        yield _Plain(value, name, unit, time, get(-2), bt, get(-4))
 
 
-def _fold(rows: Iterable[_Row], received_ms: int, message: Message) -> Message:
+def _fold(records: Iterable[_Plain], received_ms: int, message: Message) -> Message:
     readings = message.readings
+    places: dict[str, tuple[str | None, _Place]] = {}
     base_name, base_unit, base_time = "", None, 0.0
     last_time: float | None = None
     time_ms = received_ms
     values: Values = {}
-    for bn, bt, bu, n, u, value, t in rows:
-        if bn is not None:
-            base_name = bn
-        if bu is not None:
-            base_unit = bu
-        if bt is not None:
-            base_time = bt
+    for record in records:
+        if record.bn is not None or record.bu is not None:
+            base_name = base_name if record.bn is None else record.bn
+            base_unit = base_unit if record.bu is None else record.bu
+            places = {}
+        if record.bt is not None:
+            base_time = record.bt
             last_time = None
-        if t != last_time:
-            at = base_time + t
+        if record.t != last_time:
+            last_time = record.t
+            at = base_time + last_time
             if not -LATEST_S < at < LATEST_S:
                 raise _NotPlainError
             time_ms = round(at * 1000) if at >= RELATIVE_BELOW_S else received_ms + round(at * 1000)
@@ -207,12 +206,15 @@ def _fold(rows: Iterable[_Row], received_ms: int, message: Message) -> Message:
             if found is None:
                 found = readings[time_ms] = {}
             values = found
-            last_time = t
-        name, multiply, divide, offset, trouble = _place(base_name + n, base_unit if u is None else u)
+        known = places.get(record.n)
+        if known is None or known[0] != record.u:
+            place = _place(base_name + record.n, base_unit if record.u is None else record.u)
+            known = places[record.n] = record.u, place
+        name, multiply, divide, offset, trouble = known[1]
         if trouble is not None:
-            _aside(message, name, trouble, value, time_ms)
+            _aside(message, name, trouble, record.v, time_ms)
             continue
-        value = value * multiply / divide + offset  # noqa: PLW2901 - the row ends here
+        value = record.v * multiply / divide + offset
         if name in values or not -LARGEST <= value <= LARGEST:
             add_value(message, values, time_ms, name, value)
         else:
@@ -264,13 +266,14 @@ def _aside(message: Message, name: str, trouble: str, value: float, time_ms: int
 
 def _general(pack: list[Any], received_ms: int) -> Message:
     message = Message()
-    rows: list[_Row] = []
-    for record in _combined(pack, message.remarks):
+    plain: list[_Plain] = []
+    records = [packs.labelled(record) if isinstance(record, Mapping) else record for record in pack]
+    for record in _combined(records, message.remarks):
         if isinstance(record.value, float):
-            rows.append((None, None, None, record.name, record.unit, record.value, record.at_s))
+            plain.append(_Plain(record.value, record.name, record.unit, record.at_s))
         else:
             message.ignored += 1
-    return _fold(rows, received_ms, message)
+    return _fold(plain, received_ms, message)
 
 
 @dataclass(frozen=True, slots=True)
