@@ -1,17 +1,46 @@
 """The commands: parse, delegate, and turn every complaint into one sentence and an exit code."""
 
+import importlib
 import sys
 from pathlib import Path
 
 import click
 
 from hub import __version__
-from hub.cli import access, figures, importing, inventory, running, selfcheck
 from hub.cli.common import Context
 from hub.errors import PackfoldError
 
+# Where each command is; a command's module is imported when it is asked for, so that none waits for another's libraries.
+COMMANDS = {
+    "run": "running:run",
+    "demo": "running:demo",
+    "inventory": "inventory:inventory",
+    "import": "importing:import_",
+    "analyse": "figures:analyse",
+    "export": "figures:export",
+    "credential": "access:credential",
+    "user": "access:user",
+    "selfcheck": "checking:selfcheck",
+}
 
-@click.group(context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
+
+class Commands(click.Group):
+    """The group of all commands, in the order in which a new keeper meets them."""
+
+    def list_commands(self, ctx: click.Context) -> list[str]:  # noqa: ARG002 - click's signature
+        """Names of the commands."""
+        return list(COMMANDS)
+
+    def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:  # noqa: ARG002 - click's signature
+        """The command of a name, imported now."""
+        if cmd_name not in COMMANDS:
+            return None
+        module, name = COMMANDS[cmd_name].split(":")
+        command: click.Command = getattr(importlib.import_module(f"hub.cli.{module}"), name)
+        return command
+
+
+@click.group(cls=Commands, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
 @click.version_option(__version__, prog_name="packfold")
 @click.option(
     "--settings",
@@ -42,29 +71,13 @@ def cli(context: click.Context, settings: Path | None, data: Path | None) -> Non
     context.obj = Context(settings, data)
 
 
-for command in (
-    running.run,
-    running.demo,
-    inventory.inventory,
-    importing.import_,
-    figures.analyse,
-    figures.export,
-    access.credential,
-    access.user,
-    selfcheck.selfcheck,
-):
-    cli.add_command(command)
-
-
 def main() -> None:
     """Run the command line; a complaint meant for a person is printed as one sentence, never as a traceback."""
     try:
-        cli.main(standalone_mode=False)
+        status = cli.main(standalone_mode=False)
     except PackfoldError as error:
         click.echo(f"packfold: {error}", err=True)
         sys.exit(error.exit_code)
-    except click.exceptions.Exit as stop:
-        sys.exit(stop.exit_code)
     except click.Abort:
         click.echo("packfold: stopped.", err=True)
         sys.exit(1)
@@ -75,3 +88,4 @@ def main() -> None:
         # The reader of our output went away (``packfold export … | head``).
         sys.stderr.close()
         sys.exit(1)
+    sys.exit(status if isinstance(status, int) else 0)

@@ -145,10 +145,13 @@ _ADVICE = (
 
 
 class FolderLock:
-    """The mark that a hub works on a data folder. The operating system drops it when the process ends, however."""
+    """The mark that a part of a hub works on a data folder; the system drops it when the process ends, however.
 
-    def __init__(self, data: Path) -> None:
-        self._path = data / "hub.lock"
+    The part that collects is the one that moves the write-ahead log.
+    """
+
+    def __init__(self, data: Path, part: str = "collect") -> None:
+        self._path = data / f"{part}.lock"
         self._handle: int | None = None
 
     def take(self) -> None:

@@ -170,7 +170,7 @@ def _plain_cbor(pack: list[Any], received_ms: int) -> Message | None:
 
 def _cbor_records(pack: list[Any]) -> Iterator[_Plain]:
     for record in pack:
-        if type(record) is not dict or not record.keys() <= _PLAIN_LABELS:
+        if type(record) is not dict or not _PLAIN_LABELS.issuperset(record):
             raise _NotPlainError
         get = record.get
         value, time, name, unit, bt = get(2), get(6, 0.0), get(0, ""), get(1), get(-3)
