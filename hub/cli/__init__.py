@@ -10,7 +10,7 @@ from hub import __version__
 from hub.cli.common import Context
 from hub.errors import PackfoldError
 
-# Where each command is; a command's module is imported when it is asked for, so that none waits for another's libraries.
+# Where each command is. A module is imported when its command is asked for: none waits for another's libraries.
 COMMANDS = {
     "run": "running:run",
     "demo": "running:demo",
@@ -56,7 +56,7 @@ class Commands(click.Group):
 )
 @click.pass_context
 def cli(context: click.Context, settings: Path | None, data: Path | None) -> None:
-    """Keep solar-charged NiMH packs alive: store what their nodes send, and say how they are.
+    r"""Keep solar-charged NiMH packs alive: store what their nodes send, and say how they are.
 
     \b
     First steps:

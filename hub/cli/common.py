@@ -61,7 +61,7 @@ class Context:
 
 
 def now_ms() -> int:
-    """This machine's time."""
+    """The time by the clock of this machine."""
     return time.time_ns() // 1_000_000
 
 

@@ -21,7 +21,7 @@ def inventory() -> None:
 @format_option
 @click.pass_obj
 def load(context: Context, file: Path, dry_run: bool, form: str) -> None:
-    """Load an inventory FILE (TOML). Loading it again changes nothing.
+    r"""Load an inventory FILE (TOML). Loading it again changes nothing.
 
     What the file leaves out stays as it is. A fitting that is still open ends where the next one of the same pack or
     node begins. The changes are shown before they are made.

@@ -88,7 +88,7 @@ class Schedule:
         if self._stopping.is_set():
             return
         with self._database.read() as connection:
-            revision = facts.change_number(connection)
+            revision = facts.revision(connection)
         if revision == self._seen_revision:
             return
         self._status.last_started_ms = self._now_ms()

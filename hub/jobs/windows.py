@@ -3,6 +3,7 @@
 import datetime as dt
 from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 from zoneinfo import ZoneInfo
 
 from hub.store.inventory import Fitting
@@ -63,6 +64,6 @@ def _cut(date: dt.date, zone: ZoneInfo, fittings: Sequence[Fitting]) -> Iterator
     for fitting in fittings:
         edges |= {edge for edge in (fitting.start_ms, fitting.end_ms) if edge is not None and start < edge < end}
     ordered = sorted(edges)
-    for a, b in zip(ordered, ordered[1:], strict=False):
+    for a, b in pairwise(ordered):
         inside = (f.pack for f in fittings if f.start_ms <= a and (f.end_ms is None or f.end_ms > a))
         yield DayWindow(a, b, date.isoformat(), next(inside, None))

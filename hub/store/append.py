@@ -82,7 +82,7 @@ def append(connection: Connection, arrivals: Sequence[Arrival]) -> list[Outcome]
     if again:
         _merge(connection, arrivals, outcomes, again, sealed, touched)
     if touched:
-        _mark(connection, touched)
+        mark(connection, touched)
     return outcomes
 
 
@@ -268,7 +268,7 @@ def _stored_rows(connection: Connection, node_id: int, times: Collection[int]) -
     return {row[0]: dict(zip(COLUMNS, row, strict=True)) for row in _rows_at(connection, node_id, times, columns)}
 
 
-def _mark(connection: Connection, touched: set[tuple[int, int]]) -> None:
+def mark(connection: Connection, touched: set[tuple[int, int]]) -> None:
     """Note which hours of which node changed, under one revision a transaction."""
     revision = next_revision(connection)
     connection.exec_driver_sql(

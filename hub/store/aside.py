@@ -1,5 +1,6 @@
 """What could not be used: kept with its reason and, where a whole message is concerned, its bytes."""
 
+import json
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -63,6 +64,7 @@ def keep(connection: Connection, origin: Origin, remarks: Sequence[Remark], payl
                 "time_ms": remark.time_ms,
                 "quantity": remark.quantity,
                 "value": remark.value,
+                "values": None if remark.values is None else json.dumps(remark.values),
                 "payload": kept if number == 0 else None,
             }
             for number, remark in enumerate(remarks)

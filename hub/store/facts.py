@@ -19,8 +19,13 @@ def put(connection: Connection, name: str, value: str) -> None:
     )
 
 
+def revision(connection: Connection) -> int:
+    """Grows with every transaction that changes readings or the inventory."""
+    return int(get(connection, "revision") or 0)
+
+
 def next_revision(connection: Connection) -> int:
-    """A number larger than every one before, for what changes in this transaction."""
-    revision = int(get(connection, "revision") or 0) + 1
-    put(connection, "revision", str(revision))
-    return revision
+    """A revision larger than every one before, for what changes in this transaction."""
+    number = revision(connection) + 1
+    put(connection, "revision", str(number))
+    return number

@@ -9,6 +9,7 @@ from sqlalchemy import Connection, Table
 
 from hub.errors import InventoryError
 from hub.store import tables as t
+from hub.store.facts import next_revision
 from hub.store.inventory import (
     Calibration,
     Fitting,
@@ -174,6 +175,8 @@ def apply(connection: Connection, rows: Rows, *, who: str, now_ms: int) -> list[
             if before.get(key) != entry:
                 _store(connection, table, entry, key_names, new=key not in before)
         del kind
+    if changes:
+        next_revision(connection)
     for change in changes:
         connection.execute(
             t.audit.insert().values(

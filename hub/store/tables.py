@@ -157,6 +157,7 @@ set_aside = Table(
     Column("time_ms", Millis),
     Column("quantity", Text),
     Column("value", Float),
+    Column("values", Text),
     Column("payload", LargeBinary),
     Index("ix_set_aside_node_id_received_ms", "node_id", "received_ms"),
 )
@@ -196,6 +197,8 @@ log_import = Table(
     Column("sha256", Text, nullable=False),
     Column("imported_ms", Millis, nullable=False),
     Column("undone_ms", Millis),
+    Column("first_ms", Millis),
+    Column("last_ms", Millis),
     Column("lines", Integer, nullable=False),
     Column("taken", Integer, nullable=False),
     Column("repeated", Integer, nullable=False),
