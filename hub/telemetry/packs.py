@@ -71,25 +71,27 @@ def sniff(payload: bytes) -> Literal["json", "cbor"]:
 
 
 def parse_json(payload: bytes) -> list[Any]:
-    """Records of a JSON pack, each whatever stands there.
+    """Records of a JSON pack, each whatever stands there."""
+    return _array(parse_document(payload))
+
+
+def parse_document(payload: bytes) -> Any:  # noqa: ANN401 - anything JSON can say
+    """Any JSON document.
 
     Beyond the letter of JSON, the tokens ``NaN`` and ``Infinity`` are let through, so that one value that some
     firmware could not help writing does not cost the whole message; they are refused later, one by one.
     """
     try:
-        pack = json.loads(payload.removeprefix(_BOM).decode("utf-8"))
+        return json.loads(payload.removeprefix(_BOM).decode("utf-8"))
     except UnicodeDecodeError as problem:
-        raise PayloadError(
-            f"The message is not UTF-8 (byte {problem.start + 1}); SenML in JSON allows nothing else."
-        ) from None
+        raise PayloadError(f"The message is not UTF-8 (byte {problem.start + 1}); JSON allows nothing else.") from None
     except RecursionError:
-        raise PayloadError("The message is nested too deeply; a SenML pack is a flat array of records.") from None
+        raise PayloadError("The message is nested too deeply; send a flat list of values.") from None
     except ValueError as problem:
         where = f" at character {problem.pos + 1}" if isinstance(problem, json.JSONDecodeError) else ""
         raise PayloadError(
             f"The message is not whole JSON{where}; it was cut short or is not written by the rules."
         ) from None
-    return _array(pack)
 
 
 def parse_cbor(payload: bytes) -> list[Any]:

@@ -121,7 +121,9 @@ def resolve(
         Where the pack cannot be read as a whole, and, without ``remarks``, at the first record that cannot be read.
     """
     found = [
-        Resolved(r.name, r.unit, r.at_s if r.at_s >= RELATIVE_BELOW_S else received_s + r.at_s, r.value, r.sum, r.update_s)
+        Resolved(
+            r.name, r.unit, r.at_s if r.at_s >= RELATIVE_BELOW_S else received_s + r.at_s, r.value, r.sum, r.update_s
+        )
         for r in _combined(records, remarks)
     ]
     return sorted(found, key=lambda record: record.time_s)
@@ -173,7 +175,8 @@ def _cbor_records(pack: list[Any]) -> Iterator[_Plain]:
         if type(record) is not dict or not _PLAIN_LABELS.issuperset(record):
             raise _NotPlainError
         get = record.get
-        value, time, name, unit, bt = get(2), get(6, 0.0), get(0, ""), get(1), get(-3)
+        time, name, unit, bt = get(6, 0.0), get(0, ""), get(1), get(-3)
+        value: Any = get(2)
         if type(value) not in _NUMBERS or type(time) not in _NUMBERS or type(name) is not str:
             raise _NotPlainError
         if bt is not None and type(bt) not in _NUMBERS:
@@ -342,7 +345,9 @@ def _set_base(base: _Base, record: Mapping[str, Any], number: int) -> None:
 
 def _version(stated: Any, before: int | None, number: int) -> int:  # noqa: ANN401 - anything a parser yields
     if isinstance(stated, bool) or not isinstance(stated, int) or stated < 1:
-        raise PayloadError(f"Record {number}: the version bver must be a whole number above 0; send 10 or leave it out.")
+        raise PayloadError(
+            f"Record {number}: the version bver must be a whole number above 0; send 10 or leave it out."
+        )
     if stated > VERSION and stated != VERSION + SECONDARY_UNITS:
         raise PayloadError(
             f"Record {number} is of a SenML version the hub does not know; send version {VERSION}, or "

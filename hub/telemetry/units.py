@@ -24,6 +24,7 @@ class Conversion:
     offset: float = 0.0
 
     def __call__(self, value: float) -> float:
+        """The value in the catalogue's unit."""
         return value * self.multiply / self.divide + self.offset
 
 
@@ -48,7 +49,9 @@ SENML: Final[dict[str, dict[str, Conversion]]] = {
 }
 
 # Symbols of other kinds of quantity, so that a misfit can be told from a slip of the pen.
-OTHER_UNITS: Final = frozenset({"W", "kW", "J", "Wh", "kWh", "Ohm", "W/m2", "count", "%RH", "%EL", "EL", "Hz", "1/s", "dB", "ppm"})
+OTHER_UNITS: Final = frozenset(
+    {"W", "kW", "J", "Wh", "kWh", "Ohm", "W/m2", "count", "%RH", "%EL", "EL", "Hz", "1/s", "dB", "ppm"}
+)
 
 # Endings of column names. A header has no room for "/" and "%", and its "C" is what the quantity makes of it.
 HEADER: Final[dict[str, dict[str, Conversion]]] = {
@@ -107,7 +110,7 @@ def column_problem(heading: str) -> str:
 
 
 def suggestion(word: str, known: list[str]) -> str:
-    """``; did you mean "…"?`` without its question mark, or nothing where no known word is close."""
+    """An ending for a sentence about an unknown word: the nearest known one, or nothing where none is close."""
     close = difflib.get_close_matches(word, known, 1)
     return f"; the nearest name is {close[0]}" if close else ""
 
