@@ -149,6 +149,10 @@ class Outbox:
             return self._waiting[0]
         return None
 
+    def is_sent(self, packet: Packet) -> bool:
+        """Whether a message went out before and has no receipt yet."""
+        return (packet.boot, packet.sequence) in self._sent
+
     def sent(self, packet: Packet, now_s: float) -> None:
         """Note that a message from ``due`` went out."""
         key = (packet.boot, packet.sequence)

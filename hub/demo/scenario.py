@@ -121,7 +121,11 @@ _WEIR_CAMERA: Final = NodeStory(
     "weir-camera",
     "heron-weir",
     Panel(15.0, 21.6, 0.95, tilt_deg=45.0, facing_deg=200.0),
-    lambda: Regulated(0.55, Tuning(period_s=60.0, integral=1.22, proportional=0.0, delay=1, slew=0.12, windup=1.6)),
+    lambda: Regulated(
+        0.55,
+        Tuning(period_s=60.0, integral=1.22, proportional=0.0, delay=1, slew=0.12, windup=1.6),
+        EndRule(8, 4.5, hot_c=46.0, timer_s=6.0 * 3600.0, trickle_a=0.06),
+    ),
     Load(0.026, (Burst(0.75, 7200.0, 180.0, 60.0), Burst(0.4, 300.0, 5.0))),
     (
         PackStory(
@@ -153,7 +157,7 @@ _QUARRY_RELAY: Final = NodeStory(
     "quarry-relay",
     "quarry-mast",
     Panel(12.0, 18.0, 0.85, tilt_deg=50.0, facing_deg=170.0),
-    lambda: Regulated(0.24, Tuning(), EndRule(5, 2.0, drop_v=0.040)),
+    lambda: Regulated(0.27, Tuning(), EndRule(5, 2.0, drop_v=0.040)),
     Load(0.022, (Burst(0.28, 900.0, 60.0),)),
     (
         PackStory(
@@ -179,7 +183,7 @@ _QUARRY_WIND: Final = NodeStory(
     "quarry-mast",
     Panel(5.0, 22.0, 0.31, tilt_deg=75.0, facing_deg=10.0, horizon_deg=28.0),
     Direct,
-    Load(0.0065, (Burst(3.6, 86_400.0, 60.0, 28_800.0), Burst(0.15, 600.0, 6.0))),
+    Load(0.0085, (Burst(3.6, 86_400.0, 60.0, 28_800.0), Burst(0.15, 600.0, 6.0))),
     (
         PackStory(
             "Q-08",

@@ -37,10 +37,13 @@ class Entry:
 
 @dataclass(frozen=True, slots=True)
 class Written:
-    """Everything computed for one window: the ledger's entry and the rows of each figure table without their keys."""
+    """Everything computed for one window: the ledger's entry and the rows of each figure table without their keys.
+
+    ``day`` is ``None`` for a window without readings: there is nothing to say about it.
+    """
 
     entry: Entry
-    day: Mapping[str, Any]
+    day: Mapping[str, Any] | None
     charges: Sequence[Mapping[str, Any]] = field(default_factory=list)
     findings: Sequence[Mapping[str, Any]] = field(default_factory=list)
 
@@ -58,11 +61,12 @@ def write(connection: Connection, node_id: int, written: Written) -> None:
     """Put a window's figures in place of whatever was computed for that stretch of time before."""
     start, end = written.entry.start_ms, written.entry.end_ms
     clear(connection, node_id, start, end)
-    connection.execute(
-        t.day_figure.insert().values(
-            node_id=node_id, start_ms=start, end_ms=end, date=written.entry.date, **written.day
+    if written.day is not None:
+        connection.execute(
+            t.day_figure.insert().values(
+                node_id=node_id, start_ms=start, end_ms=end, date=written.entry.date, **written.day
+            )
         )
-    )
     if written.charges:
         connection.execute(
             t.charge_figure.insert(),

@@ -40,6 +40,7 @@ class Node:
     voltage_gain_error: float | None = None
     temperature_error_c: float | None = None
     current_full_scale_a: float | None = None
+    integration: str = "trapezoid"
 
 
 @dataclass(frozen=True, slots=True)

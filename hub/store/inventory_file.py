@@ -52,6 +52,7 @@ class NodeRow(Struct, forbid_unknown_fields=True):
     voltage_gain_error: NotNegative | UnsetType = UNSET
     temperature_error_c: NotNegative | UnsetType = UNSET
     current_full_scale_a: Positive | UnsetType = UNSET
+    integration: Literal["trapezoid", "hold"] | UnsetType = UNSET
 
 
 class PackRow(Struct, forbid_unknown_fields=True):

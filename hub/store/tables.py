@@ -65,6 +65,8 @@ node = Table(
     Column("voltage_gain_error", Float),
     Column("temperature_error_c", Float),
     Column("current_full_scale_a", Float),
+    Column("integration", Text, nullable=False, server_default="trapezoid"),
+    CheckConstraint("integration IN ('trapezoid', 'hold')", name="integration"),
     CheckConstraint("current_sensing IN ('net', 'charge-only')", name="current_sensing"),
 )
 

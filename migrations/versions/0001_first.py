@@ -83,7 +83,9 @@ def upgrade() -> None:
         sa.Column("voltage_gain_error", sa.Float(), nullable=True),
         sa.Column("temperature_error_c", sa.Float(), nullable=True),
         sa.Column("current_full_scale_a", sa.Float(), nullable=True),
+        sa.Column("integration", sa.Text(), server_default="trapezoid", nullable=False),
         sa.CheckConstraint("current_sensing IN ('net', 'charge-only')", name=op.f("ck_node_current_sensing")),
+        sa.CheckConstraint("integration IN ('trapezoid', 'hold')", name=op.f("ck_node_integration")),
         sa.ForeignKeyConstraint(["site_id"], ["site.id"], name=op.f("fk_node_site_id_site")),
         sa.PrimaryKeyConstraint("id", name=op.f("pk_node")),
         sa.UniqueConstraint("name", name=op.f("uq_node_name")),
@@ -111,9 +113,7 @@ def upgrade() -> None:
         sa.Column("note", sa.Text(), server_default="", nullable=False),
         sa.ForeignKeyConstraint(["node_id"], ["node.id"], name=op.f("fk_calibration_node_id_node")),
         sa.PrimaryKeyConstraint("id", name=op.f("pk_calibration")),
-        sa.UniqueConstraint(
-            "node_id", "quantity", "start_ms", name=op.f("uq_calibration_node_id_quantity_start_ms")
-        ),
+        sa.UniqueConstraint("node_id", "quantity", "start_ms", name=op.f("uq_calibration_node_id_quantity_start_ms")),
     )
     op.create_table(
         "charge_figure",
@@ -335,9 +335,7 @@ def upgrade() -> None:
         sa.Column("node_id", sa.Integer(), nullable=False),
         sa.Column("time_ms", sa.BigInteger().with_variant(sa.Integer(), "sqlite"), nullable=False),
         sa.Column("quantity", sa.Text(), nullable=False),
-        sa.ForeignKeyConstraint(
-            ["import_id"], ["log_import.id"], name=op.f("fk_import_fill_import_id_log_import")
-        ),
+        sa.ForeignKeyConstraint(["import_id"], ["log_import.id"], name=op.f("fk_import_fill_import_id_log_import")),
         sa.ForeignKeyConstraint(["node_id"], ["node.id"], name=op.f("fk_import_fill_node_id_node")),
         sa.PrimaryKeyConstraint("import_id", "node_id", "time_ms", "quantity", name=op.f("pk_import_fill")),
     )
