@@ -34,6 +34,7 @@ class Context:
 
     def __init__(self, settings_path: Path | None, data: Path | None) -> None:
         self.settings_path = settings_path
+        self.given_data = data
         self.data = data or platformdirs.user_data_path("packfold")
 
     @cached_property

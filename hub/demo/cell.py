@@ -11,6 +11,7 @@ reproduce a remembered figure; the tests check the outcome against the published
 
 import copy
 from dataclasses import dataclass
+from itertools import pairwise
 from math import exp, log10
 from typing import Final
 
@@ -55,7 +56,7 @@ def open_circuit_v(level: float) -> float:
 
 
 _TABLE: Final = [open_circuit_v(_LOWEST + j / _PER_LEVEL) for j in range(int(1.4 * _PER_LEVEL))]
-_RISE: Final = [b - a for a, b in zip(_TABLE, _TABLE[1:], strict=False)]
+_RISE: Final = [b - a for a, b in pairwise(_TABLE)]
 
 
 @dataclass(frozen=True, slots=True)
@@ -273,9 +274,7 @@ class Pack:
         self.voltage_v = total_v
         days = dt_s / 86400.0 * 2.0 ** ((self.temperature_c - 25.0) / 10.0)
         self.wear += self.design.fade_scale * (
-            FADE_PER_CYCLE * used / rated
-            + FADE_PER_DAY * days
-            + FADE_PER_OVERCHARGE * oxygen_a * hours / rated
+            FADE_PER_CYCLE * used / rated + FADE_PER_DAY * days + FADE_PER_OVERCHARGE * oxygen_a * hours / rated
         )
         if self.wear - self._applied > 1e-5:
             self._age()

@@ -1,4 +1,4 @@
-"""Panels and the ways a small node charges from one: through a diode, or with a regulated current that may end itself."""
+"""Panels, and how a small node charges from one: through a diode, or with a regulated current that may end itself."""
 
 from dataclasses import dataclass
 from math import exp, log

@@ -3,7 +3,7 @@
 import threading
 import time
 from collections import deque
-from typing import Any, Final
+from typing import Final
 
 from paho.mqtt.client import Client, ConnectFlags, DisconnectFlags, MQTTMessage
 from paho.mqtt.enums import CallbackAPIVersion, MQTTErrorCode
@@ -16,8 +16,10 @@ from hub.demo.outbox import Packet
 # Publishes a node has on the way to the broker at once, and messages it leaves without a receipt before it waits.
 UNACKNOWLEDGED: Final = 8
 UNRECEIPTED: Final = 100
-# A message goes again after this long without a receipt, and a hub that gives none is not waited for longer.
+# A message goes again after this long without a receipt, then ever more seldom while there are none at all.
 AGAIN_S: Final = 20.0
+AGAIN_LONGEST_S: Final = 600.0
+# A hub that gives no receipt is not waited for longer before the next lot of messages goes out.
 PATIENCE_S: Final = 10.0
 KEEP_ALIVE_S: Final = 30
 
@@ -49,7 +51,8 @@ class Link:
         self._unacknowledged = 0
         self._connected = False
         self._window = UNRECEIPTED
-        self._heard_s = time.monotonic()
+        self._again_s = AGAIN_S
+        self._moved_s = self._slowed_s = time.monotonic()
         client = Client(CallbackAPIVersion.VERSION2, client_id=f"node-{node.name}")
         if login is not None:
             client.username_pw_set(*login)
@@ -90,30 +93,30 @@ class Link:
         now = time.monotonic()
         while self._receipts:
             self.node.outbox.receipt(self._receipts.popleft())
-            self._window, self._heard_s = UNRECEIPTED, now
+            self._window, self._again_s, self._moved_s = UNRECEIPTED, AGAIN_S, now
         outbox = self.node.outbox
         if outbox.unreceipted < self._window:
-            self._heard_s = max(self._heard_s, now - PATIENCE_S / 2) if outbox.unreceipted else now
-        elif now - self._heard_s > PATIENCE_S:
-            self._window, self._heard_s = self._window + UNRECEIPTED, now
+            self._moved_s = now
+        elif now - self._moved_s > PATIENCE_S:
+            self._window, self._moved_s = self._window + UNRECEIPTED, now
         went = 0
         while self._connected and self._unacknowledged < UNACKNOWLEDGED:
-            packet = outbox.due(now, self._window, AGAIN_S)
+            packet = outbox.due(now, self._window, self._again_s)
             if packet is None or not self._send(packet, now, now_ms):
                 break
             went += 1
         return went
 
     def _send(self, packet: Packet, now: float, now_ms: int) -> bool:
-        payload = packet.encode(
-            self.node.fitout.form, self.node.urn, now_ms, self.node.outbox.oldest(packet.boot)
-        )
+        payload = packet.encode(self.node.fitout.form, self.node.urn, now_ms, self.node.outbox.oldest(packet.boot))
         again = self.node.outbox.is_sent(packet)
         if not self._publish("telemetry", payload):
             return False
         self.node.outbox.sent(packet, now)
         self.sent += 1
         self.repeats += again
+        if again and now - self._slowed_s > self._again_s:
+            self._again_s, self._slowed_s = min(2.0 * self._again_s, AGAIN_LONGEST_S), now
         if not again and self.node.twice(packet) and self._publish("telemetry", payload):
             self.sent += 1
             self.repeats += 1
@@ -135,7 +138,7 @@ class Link:
         self.failures.append(f"{where}: {error!r}")
 
     def _on_connect(
-        self, client: Client, _data: Any, _flags: ConnectFlags, reason: ReasonCode, _props: Properties | None
+        self, client: Client, _data: object, _flags: ConnectFlags, reason: ReasonCode, _props: Properties | None
     ) -> None:
         try:
             if reason.is_failure:
@@ -151,12 +154,12 @@ class Link:
             self._note("on_connect", error)
 
     def _on_disconnect(
-        self, _client: Client, _data: Any, _flags: DisconnectFlags, _reason: ReasonCode, _props: Properties | None
+        self, _client: Client, _data: object, _flags: DisconnectFlags, _reason: ReasonCode, _props: Properties | None
     ) -> None:
         self._connected = False
         self._changed.set()
 
-    def _on_message(self, _client: Client, _data: Any, message: MQTTMessage) -> None:
+    def _on_message(self, _client: Client, _data: object, message: MQTTMessage) -> None:
         try:
             self._receipts.append(bytes(message.payload))
             self._changed.set()
@@ -164,7 +167,7 @@ class Link:
             self._note("on_message", error)
 
     def _on_publish(
-        self, _client: Client, _data: Any, _mid: int, _reason: ReasonCode, _props: Properties | None
+        self, _client: Client, _data: object, _mid: int, _reason: ReasonCode, _props: Properties | None
     ) -> None:
         with self._lock:
             self._unacknowledged -= 1

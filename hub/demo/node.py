@@ -2,6 +2,7 @@
 
 from collections.abc import Iterator
 from dataclasses import dataclass, field
+from itertools import pairwise
 from typing import Final, Literal
 
 import numpy as np
@@ -189,7 +190,7 @@ class Node:
         n = stretch.time_ms.size
         changes = np.diff(stretch.boot).astype(bool) | np.diff(stretch.has_clock)
         edges = [0, *(np.flatnonzero(changes) + 1).tolist(), n]
-        for low, high in zip(edges, edges[1:], strict=False):
+        for low, high in pairwise(edges):
             for a in range(low, high, readings):
                 part = slice(a, min(a + readings, high))
                 yield self._packet(stretch, part)

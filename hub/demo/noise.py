@@ -1,5 +1,6 @@
 """Dice that depend on nothing but a seed and an instant: any moment can be computed without what came before."""
 
+from math import sqrt
 from typing import Final
 
 import numpy as np
@@ -31,7 +32,7 @@ def bits(keys: Integers, seed: int) -> npt.NDArray[np.uint64]:
 
 def uniform(keys: Integers, seed: int) -> Floats:
     """Numbers in [0, 1), one a key."""
-    return (bits(keys, seed) >> np.uint64(11)).astype(np.float64) * 2.0**-53
+    return (bits(keys, seed) >> np.uint64(11)).astype(np.float64) / float(1 << 53)
 
 
 def normal(keys: Integers, seed: int) -> Floats:
@@ -43,7 +44,7 @@ def normal(keys: Integers, seed: int) -> Floats:
     total = np.zeros(mixed.shape)
     for shift in (0, 16, 32, 48):
         total += ((mixed >> np.uint64(shift)) & np.uint64(0xFFFF)).astype(np.float64)
-    return (total / 65535.0 - 2.0) * 3.0**0.5
+    return (total / 65535.0 - 2.0) * sqrt(3.0)
 
 
 def smooth(time_s: Floats, period_s: float, seed: int) -> Floats:

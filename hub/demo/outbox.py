@@ -82,9 +82,7 @@ class Packet:
         for name, values in self.columns.items():
             records.append({_BASE_NAME: urn + name, _BASE_UNIT: _unit(name), _TIME: times[0], _VALUE: values[0]})
             records += [{_TIME: t, _VALUE: v} for t, v in zip(times[1:], values[1:], strict=True)]
-        records += [
-            {_BASE_NAME: urn + n, _BASE_UNIT: _unit(n), _TIME: times[0], _VALUE: v} for n, v in plain.items()
-        ]
+        records += [{_BASE_NAME: urn + n, _BASE_UNIT: _unit(n), _TIME: times[0], _VALUE: v} for n, v in plain.items()]
         if base is not None:
             records[0][_BASE_TIME] = base
         return records

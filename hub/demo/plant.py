@@ -17,6 +17,17 @@ Times = npt.NDArray[np.int64]
 # A node lets go of its load below the first and comes back at the second, volts per cell.
 SHED_V: Final = 1.0
 RETURN_V: Final = 1.26
+# The first columns of a step, in its order.
+_SEEN: Final = (
+    "pack_voltage",
+    "pack_current",
+    "pack_temperature",
+    "panel_voltage",
+    "panel_current",
+    "load_current",
+    "charger_duty",
+    "charge_target",
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -93,9 +104,7 @@ class Plant:
         ]
         self.time_ms = int(time_ms[-1]) if time_ms.size else self.time_ms
         columns = np.array(rows, np.float64).reshape(-1, 15).T
-        names = "pack_voltage pack_current pack_temperature panel_voltage panel_current load_current".split()
-        seen = dict(zip(names, columns, strict=False))
-        seen |= {"air_temperature": box, "charger_duty": columns[6], "charge_target": columns[7]}
+        seen = {name: columns[k] for k, name in enumerate(_SEEN)} | {"air_temperature": box}
         return Course(time_ms, seen, columns[8] > 0.0, *columns[9:])
 
     def _step(self, plane_w: float, air_c: float, box_c: float, load_a: float, dt_s: float) -> tuple[float, ...]:

@@ -75,9 +75,7 @@ def _span(now_ms: int, days_ago: float, hours: float) -> tuple[int, int]:
     return start, start + round(hours * HOUR_MS)
 
 
-def _fault(
-    now_ms: int, kind: Literal["loose-wire", "stuck"], channel: str, days_ago: float, hours: float
-) -> Fault:
+def _fault(now_ms: int, kind: Literal["loose-wire", "stuck"], channel: str, days_ago: float, hours: float) -> Fault:
     return Fault(channel, kind, *_span(now_ms, days_ago, hours))
 
 
@@ -291,9 +289,7 @@ def build(name: str, now: dt.datetime, days: int = HISTORY_DAYS, seed: int = SEE
             events.append(Event(swap, "swap", packs[1]))
         else:
             first = packs[1]
-    plant = Plant(
-        weather, place, story.panel, story.charger(), story.load, first, begin, box_rise_k=story.box_rise_k
-    )
+    plant = Plant(weather, place, story.panel, story.charger(), story.load, first, begin, box_rise_k=story.box_rise_k)
     return Node(name, plant, story.fitout(now_ms), seed, tuple(e for e in events if e.at_ms > begin))
 
 

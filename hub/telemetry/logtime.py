@@ -150,7 +150,7 @@ def pattern_clock(pattern: str, zone: tzinfo | None, rule: Literal["order"] | No
     On the night the clocks go back an hour comes twice. Without a rule its rows raise, for which of the two is meant
     cannot be seen. With ``order`` the rows of the log tell: they belong to the first time round until the local time
     steps back. A log that begins in that hour, or comes to it after a gap of an hour or more, stays undecided until
-    the step is seen. The clock keeps the order, so each file needs a new one.
+    the step is seen; so do rows an hour apart, which show no step. The clock keeps the order, so each file needs a new one.
     """
     order = _Order() if rule == "order" else None
 
@@ -173,16 +173,18 @@ class _Order:
 
     def __init__(self) -> None:
         self.before: datetime | None = None
+        self.clear = False
         self.fold: int | None = None
 
-    def decide(self, local: datetime, ambiguous: bool) -> int | None:
-        before, self.before = self.before, local
+    def decide(self, local: datetime, *, ambiguous: bool) -> int | None:
+        """Which pass of a repeated hour a row belongs to: 0, 1, or ``None`` where the rows do not tell."""
+        before, clear = self.before, self.clear
+        self.before, self.clear = local, not ambiguous
         if not ambiguous:
             self.fold = None
-            return 0
-        if before is not None and local <= before and before - local < _HOUR:
+        elif before is not None and timedelta(0) < before - local < _HOUR:
             self.fold = 1
-        elif self.fold is None and before is not None and timedelta(0) < local - before < _HOUR:
+        elif before is not None and clear and local - before < _HOUR:
             self.fold = 0
         return self.fold
 

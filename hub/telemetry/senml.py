@@ -22,6 +22,8 @@ from hub.telemetry.units import conversion, misfit, shortened
 
 MAX_PAYLOAD_BYTES: Final = 1 << 20
 MAX_RECORDS: Final = 50_000
+# Names and units are repeated into every record and remembered, so they must not be long.
+MAX_TEXT: Final = 255
 
 # Below this a time counts from the moment of receipt, from here on it is Unix time (RFC 8428, section 4.5.3).
 RELATIVE_BELOW_S: Final = 2**28
@@ -145,6 +147,7 @@ class _Plain(msgspec.Struct, forbid_unknown_fields=True, gc=False):
 _PLAIN_JSON: Final = msgspec.json.Decoder(list[_Plain])
 _PLAIN_LABELS: Final = frozenset({-4, -3, -2, 0, 1, 2, 6})
 _NUMBERS: Final = frozenset({int, float})
+_TEXTS: Final = frozenset({str, type(None)})
 
 
 class _NotPlainError(Exception):
@@ -166,7 +169,7 @@ def _plain_json(payload: bytes, received_ms: int) -> Message | None:
 def _plain_cbor(pack: list[Any], received_ms: int) -> Message | None:
     try:
         return _fold(_cbor_records(pack), received_ms, Message())
-    except (_NotPlainError, TypeError):
+    except _NotPlainError:
         return None
 
 
@@ -175,13 +178,15 @@ def _cbor_records(pack: list[Any]) -> Iterator[_Plain]:
         if type(record) is not dict or not _PLAIN_LABELS.issuperset(record):
             raise _NotPlainError
         get = record.get
-        time, name, unit, bt = get(6, 0.0), get(0, ""), get(1), get(-3)
         value: Any = get(2)
+        time, name, unit, bn, bt, bu = get(6, 0.0), get(0, ""), get(1), get(-2), get(-3), get(-4)
         if type(value) not in _NUMBERS or type(time) not in _NUMBERS or type(name) is not str:
+            raise _NotPlainError
+        if not (type(unit) in _TEXTS and type(bn) in _TEXTS and type(bu) in _TEXTS):
             raise _NotPlainError
         if bt is not None and type(bt) not in _NUMBERS:
             raise _NotPlainError
-        yield _Plain(value, name, unit, time, get(-2), bt, get(-4))
+        yield _Plain(value, name, unit, time, bn, bt, bu)
 
 
 def _fold(records: Iterable[_Plain], received_ms: int, message: Message) -> Message:
@@ -211,7 +216,7 @@ def _fold(records: Iterable[_Plain], received_ms: int, message: Message) -> Mess
             values = found
         known = places.get(record.n)
         if known is None or known[0] != record.u:
-            place = _place(base_name + record.n, base_unit if record.u is None else record.u)
+            place = _place_of(base_name, record.n, base_unit if record.u is None else record.u)
             known = places[record.n] = record.u, place
         name, multiply, divide, offset, trouble = known[1]
         if trouble is not None:
@@ -223,6 +228,12 @@ def _fold(records: Iterable[_Plain], received_ms: int, message: Message) -> Mess
         else:
             values[name] = value
     return message
+
+
+def _place_of(base_name: str, name: str, unit: str | None) -> "_Place":
+    if len(base_name) + len(name) > MAX_TEXT or (unit is not None and len(unit) > MAX_TEXT):
+        raise _NotPlainError
+    return _place(base_name + name, unit)
 
 
 class _Place(NamedTuple):
@@ -330,8 +341,11 @@ def _set_base(base: _Base, record: Mapping[str, Any], number: int) -> None:
         base.bver = _version(record["bver"], base.bver, number)
     for label in ("bn", "bu"):
         if label in record:
-            if not isinstance(record[label], str):
-                raise PayloadError(f"Record {number}: {label} must be text; the pack cannot be read without it.")
+            if not isinstance(record[label], str) or len(record[label]) > MAX_TEXT:
+                raise PayloadError(
+                    f"Record {number}: {label} must be text of at most {MAX_TEXT} characters; "
+                    "the pack cannot be read without it."
+                )
             setattr(base, label, record[label])
     for label in ("bt", "bv", "bs"):
         if label in record:
@@ -367,6 +381,8 @@ def _combine(base: _Base, record: Any, number: int) -> _Combined | None:  # noqa
     name, unit = record.get("n", ""), record.get("u", base.bu)
     if not isinstance(name, str) or not (unit is None or isinstance(unit, str)):
         raise PayloadError(f"Record {number}: name and unit must be text.")
+    if len(base.bn) + len(name) > MAX_TEXT or (unit is not None and len(unit) > MAX_TEXT):
+        raise PayloadError(f"Record {number}: name and unit have at most {MAX_TEXT} characters; shorten them.")
     name = base.bn + name
     if not packs.legal_name(name):
         raise PayloadError(f"Record {number}: {packs.illegal(name)}")

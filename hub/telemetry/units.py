@@ -53,6 +53,9 @@ OTHER_UNITS: Final = frozenset(
     {"W", "kW", "J", "Wh", "kWh", "Ohm", "W/m2", "count", "%RH", "%EL", "EL", "Hz", "1/s", "dB", "ppm"}
 )
 
+# A longer word is no slip of the pen, and comparing it would take time.
+LONGEST_SLIP: Final = 8
+
 # Endings of column names. A header has no room for "/" and "%", and its "C" is what the quantity makes of it.
 HEADER: Final[dict[str, dict[str, Conversion]]] = {
     "V": SENML["V"],
@@ -79,7 +82,11 @@ def misfit(quantity: Quantity, unit: str) -> str:
     fitting = list(SENML[quantity.unit])
     advice = f"send it in {_either(fitting)}"
     elsewhere = unit in OTHER_UNITS or any(unit in units for units in SENML.values())
-    if not elsewhere and (close := difflib.get_close_matches(unit.casefold(), [u.casefold() for u in fitting], 1)):
+    if (
+        not elsewhere
+        and len(unit) <= LONGEST_SLIP
+        and (close := difflib.get_close_matches(unit.casefold(), [u.casefold() for u in fitting], 1))
+    ):
         advice = f"write {next(u for u in fitting if u.casefold() == close[0])}"
     kind = "is a unit of something else" if elsewhere else "is not a unit the hub knows"
     return f"{quantity.name} came in {shortened(unit)}, which {kind}; {advice}."
