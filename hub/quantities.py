@@ -18,7 +18,7 @@ class Quantity:
     name
         The name in messages, columns and code.
     unit
-        The unit inside the hub, as people write it: V, A, Ah, °C, s, dBW, ratio, count.
+        The unit inside the hub, as people write it: V, A, Ah, °C, s, dBm or ratio.
     senml_unit
         The unit of the SenML registry that stands for it; ``None`` where the registry has no such unit.
     decimals

@@ -2,7 +2,6 @@
 
 import shutil
 import socket
-import sqlite3
 import time
 from collections.abc import Iterator
 from dataclasses import asdict, dataclass
@@ -13,12 +12,10 @@ import click
 from hub.cli.common import Context, format_option, report
 from hub.errors import PackfoldError
 from hub.store import inventory, people, schema
-from hub.store.engine import Database, FolderLock
+from hub.store.engine import Database, FolderLock, sqlite_release
 
 Verdict = Literal["good", "look", "bad"]
 
-# Fixed upstream in this version: two processes that move the write-ahead log at the same moment could damage the file.
-SQLITE_SOUND = (3, 51, 3)
 # Less than this and the database cannot even be copied for an upgrade.
 DISK_LOW_BYTES = 500_000_000
 # The first version of this program is younger than this; a clock before it is wrong.
@@ -79,8 +76,8 @@ def _clock(_context: Context) -> Iterator[Finding]:
 
 
 def _sqlite(_context: Context) -> Iterator[Finding]:
-    version = sqlite3.sqlite_version
-    if sqlite3.sqlite_version_info < SQLITE_SOUND:
+    version, sound = sqlite_release()
+    if not sound:
         yield Finding(
             "SQLite",
             "look",

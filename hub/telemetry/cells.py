@@ -11,13 +11,15 @@ DELIMITERS: Final = (",", ";", "\t")
 
 
 def split(text: str, delimiter: str) -> list[str]:
-    """Cells of one line.
+    """Cells of one line; where spaces cut it, any number of them counts as one.
 
     Raises
     ------
     PayloadError
         Where a quotation mark is left open, as in a torn line.
     """
+    if delimiter == " ":
+        return text.split()
     if '"' not in text:
         return text.split(delimiter)
     try:

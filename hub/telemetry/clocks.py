@@ -106,8 +106,9 @@ def starts(heard: Iterable[Heard], *, transit_ms: int = TRANSIT_MS, drift: float
     heard
         Messages of one node in any order, repeats included.
     transit_ms
-        How long the quickest message of a boot is under way at most. It bounds only boots heard from while they
-        lasted: before anything of a later boot arrived.
+        How long the quickest message of a boot is under way at most. It bounds only boots surely heard from while
+        they lasted: by a message that arrived before any later boot can have begun. What a later boot delivers of an
+        earlier one bounds nothing from below.
     drift
         Largest relative error of the node's oscillator.
 
@@ -122,14 +123,17 @@ def starts(heard: Iterable[Heard], *, transit_ms: int = TRANSIT_MS, drift: float
         by_boot.setdefault(message.boot, []).append(message)
     order = sorted(by_boot)
     latest = _latest(by_boot, order, drift)
+    quick = {
+        boot: min(floor(m.received_ms - m.uptime_s * 1000 * (1 + drift)) for m in messages) - transit_ms
+        for boot, messages in by_boot.items()
+    }
     found: dict[int, Start] = {}
     floor_ms: int | None = None
     for position, boot in enumerate(order):
         bounds = [] if floor_ms is None else [floor_ms]
-        later = [m.received_ms for b in order[position + 1 :] for m in by_boot[b]]
-        live = [m for m in by_boot[boot] if not later or m.received_ms < min(later)]
-        if live:
-            bounds.append(min(floor(m.received_ms - m.uptime_s * 1000 * (1 + drift)) for m in live) - transit_ms)
+        next_ms = min((quick[later] for later in order[position + 1 :]), default=None)
+        if next_ms is None or any(m.received_ms < next_ms for m in by_boot[boot]):
+            bounds.append(quick[boot])
         earliest = max(bounds, default=None)
         if earliest is not None and earliest > latest[boot]:
             earliest = None

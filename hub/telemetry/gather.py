@@ -10,6 +10,11 @@ from hub.telemetry.message import EARLIEST_MS, FUTURE_LIMIT_MS, Message, Remark,
 # fits a signed 64-bit integer. Values beyond the catalogue's range but within this one are kept: raw is raw.
 LARGEST: Final = 1e12
 
+# A node that sends thousands of names must not fill the keeper's page with them.
+MOST_UNKNOWN: Final = 100
+LONGEST_UNKNOWN: Final = 64
+OTHERS: Final = "(others)"
+
 # Counters of a message must fit the same integer.
 LARGEST_COUNT: Final = 2**63 - 1
 
@@ -55,6 +60,14 @@ def add_count(message: Message, name: str, value: float, line: int | None = None
         return False
     setattr(message, name, int(value))
     return True
+
+
+def add_unknown(message: Message, name: str) -> None:
+    """Count a name that is not in the catalogue; names beyond the first hundred of a message count as one."""
+    name = name[:LONGEST_UNKNOWN]
+    if name not in message.unknown and len(message.unknown) >= MOST_UNKNOWN:
+        name = OTHERS
+    message.unknown[name] = message.unknown.get(name, 0) + 1
 
 
 def time_problem(time_ms: int, received_ms: int) -> tuple[str, str] | None:

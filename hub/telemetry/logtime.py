@@ -150,7 +150,8 @@ def pattern_clock(pattern: str, zone: tzinfo | None, rule: Literal["order"] | No
     On the night the clocks go back an hour comes twice. Without a rule its rows raise, for which of the two is meant
     cannot be seen. With ``order`` the rows of the log tell: they belong to the first time round until the local time
     steps back. A log that begins in that hour, or comes to it after a gap of an hour or more, stays undecided until
-    the step is seen; so do rows an hour apart, which show no step. The clock keeps the order, so each file needs a new one.
+    the step is seen; so do rows an hour apart, which show no step. The clock remembers the rows, so each file needs a
+    new one.
     """
     order = _Order() if rule == "order" else None
 

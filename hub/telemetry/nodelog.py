@@ -7,17 +7,18 @@ is exactly one of: taken, set aside with its number and reason, header, or blank
 from collections.abc import Iterator
 from dataclasses import dataclass, field
 from math import isfinite
-from typing import BinaryIO, Final, NamedTuple
+from typing import BinaryIO, Final
 
 from hub.errors import PayloadError, UsageError
-from hub.quantities import MESSAGE_FIELDS
+from hub.quantities import NAMES
 from hub.telemetry import logtime
-from hub.telemetry.cells import DELIMITERS, Decimal, decimals, number, split
-from hub.telemetry.gather import LARGEST, add_value, time_problem
+from hub.telemetry.cells import decimals, number, split
+from hub.telemetry.columns import Layout, foreign, mapped_layout, native_layout
+from hub.telemetry.gather import LARGEST, add_unknown, add_value, time_problem
 from hub.telemetry.lines import Line, physical_lines
-from hub.telemetry.logmapping import EXAMPLE, Column, LogMapping, check_mapping, clock_of, time_columns
+from hub.telemetry.logmapping import LogMapping, check_mapping
 from hub.telemetry.message import Message, Remark, Values
-from hub.telemetry.units import SAME, Conversion, column_problem, shortened, split_column, suggestion
+from hub.telemetry.units import SAME, column_problem, shortened
 
 CHUNK_READINGS: Final = 5000
 # A header is looked for this far into a file; what precedes it is a banner or the debris of a torn write.
@@ -86,28 +87,6 @@ def read_log(
     return _Reader(source, mapping, received_ms, chunk_readings).chunks()
 
 
-@dataclass(slots=True)
-class _Layout:
-    """How a line is read, from its header or from the mapping."""
-
-    delimiter: str
-    decimal: Decimal
-    width: int
-    exact: bool
-    clock: logtime.Clock | None
-    times: list[int]
-    columns: list["_Column"]
-    boot: int | None = None
-
-
-class _Column(NamedTuple):
-    place: int
-    quantity: str
-    scale: float
-    shift: float
-    unit: Conversion
-
-
 class _Reader:
     def __init__(
         self, source: bytes | BinaryIO, mapping: LogMapping | None, received_ms: int, chunk_readings: int
@@ -117,7 +96,7 @@ class _Reader:
         self.received_ms = received_ms
         self.chunk_readings = chunk_readings
         self.chunk = Chunk()
-        self.layout: _Layout | None = None
+        self.layout: Layout | None = None
         self.header_text: str | None = None
         self.first_text = ""
         self.last_cells: list[str] = []
@@ -137,12 +116,12 @@ class _Reader:
             elif text is not None and not self._header(line, text):
                 yield from self._take(line, text)
             if self.layout is None and len(self.chunk.set_aside) > HEADER_WITHIN_LINES and line.number >= begin:
-                raise self._foreign(self.first_text)
+                raise foreign(self.first_text)
             full = max(len(self.chunk.message.readings), len(self.chunk.set_aside)) >= self.chunk_readings
             if full and (self.layout is not None or line.number < begin):
                 yield self._next_chunk(self.chunk.message.boot)
         if self.layout is None and self.first_text:
-            raise self._foreign(self.first_text)
+            raise foreign(self.first_text)
         if self.chunk.lines:
             yield self._next_chunk(None)
 
@@ -196,91 +175,30 @@ class _Reader:
             return None
         return text
 
-    # Headers -----------------------------------------------------------------------------------------------------
-
     def _header(self, line: Line, text: str) -> bool:
-        if self.mapping is not None:
-            return self._mapped_header(self.mapping, text)
-        if "time" not in text:
-            return False
-        for delimiter in DELIMITERS:
-            try:
-                headings = [cell.strip() for cell in split(text, delimiter)]
-            except PayloadError:
-                continue
-            if "time" in headings:
-                self._use_headings(line, text, headings, delimiter)
-                return True
+        """Whether the line is a header; one of the hub's own form also changes how the lines after it are read."""
+        if self.mapping is None:
+            found = native_layout(text)
+            if found is None:
+                return False
+            if not found.columns and self.layout is None:
+                raise foreign(text)
+            self._note_unknown(line, found)
+            self.layout, self.last_cells = found, []
+        elif self.layout is None:
+            self.layout = mapped_layout(self.mapping, text)
+            self.header_text = text if self.mapping.header else None
+        if self.mapping is None or text == self.header_text:
+            self.chunk.headers += 1
+            return True
         return False
 
-    def _use_headings(self, line: Line, text: str, headings: list[str], delimiter: str) -> None:
+    def _note_unknown(self, line: Line, layout: Layout) -> None:
         message = self.chunk.message
-        layout = _Layout(
-            delimiter,
-            "," if delimiter == ";" else ".",
-            len(headings),
-            True,
-            logtime.native_ms,
-            [headings.index("time")],
-            [],
-        )
-        problems = []
-        for index, heading in enumerate(headings):
-            found = split_column(heading)
-            if found is not None and found[0].name not in [c.quantity for c in layout.columns]:
-                layout.columns.append(_Column(index, found[0].name, 1.0, 0.0, found[1]))
-            elif heading == "boot":
-                layout.boot = index
-            elif heading not in ("time", "", *MESSAGE_FIELDS):
-                problems.append(heading)
-        if not layout.columns and self.layout is None:
-            raise self._foreign(text)
-        for heading in problems:
-            message.unknown[heading[:64]] = message.unknown.get(heading[:64], 0) + 1
-            if heading.rpartition("_")[0] and split_column(heading) is None:
+        for heading in layout.unknown:
+            add_unknown(message, heading)
+            if any(heading.startswith(f"{name}_") for name in NAMES):
                 message.remarks.append(Remark("unit", column_problem(heading), line=line.number))
-        self.layout = layout
-        self.last_cells = []
-        self.chunk.headers += 1
-
-    def _mapped_header(self, mapping: LogMapping, text: str) -> bool:
-        if self.layout is not None:
-            if text == self.header_text:
-                self.chunk.headers += 1
-                return True
-            return False
-        headings = [cell.strip() for cell in split(text, mapping.delimiter)] if mapping.header else []
-        times = [_index(column, headings) for column in time_columns(mapping.time)]
-        columns = [
-            _Column(_index(c.column, headings), c.quantity, c.scale, c.offset, c.conversion) for c in mapping.columns
-        ]
-        needed = 1 + max(times + [c.place for c in columns])
-        if mapping.header and needed > len(headings):
-            raise PayloadError(
-                f"The mapping uses column {needed} and the header {shortened(text)} has {len(headings)}."
-            )
-        self.layout = _Layout(
-            mapping.delimiter,
-            mapping.decimal,
-            max(needed, len(headings)),
-            mapping.header,
-            clock_of(mapping.time) if times else None,
-            times,
-            columns,
-        )
-        if mapping.header:
-            self.header_text = text
-            self.chunk.headers += 1
-        return mapping.header
-
-    def _foreign(self, text: str) -> PayloadError:
-        headings = next((split(text, d) for d in DELIMITERS if d in text and '"' not in text), [text])
-        unknown = [h.strip() for h in headings if split_column(h.strip()) is None and h.strip() != "time"]
-        which = ", ".join(shortened(h, 30) for h in unknown[:8]) + (" and more" if len(unknown) > 8 else "")  # noqa: PLR2004
-        return PayloadError(
-            f"The log begins with {shortened(text, 120)}, which is not the header of a node log (unknown: "
-            f"{which or 'nothing, but there is no time column'}); write a mapping, for example {EXAMPLE}."
-        )
 
     # Rows --------------------------------------------------------------------------------------------------------
 
@@ -358,7 +276,7 @@ class _Reader:
                 good += add_value(message, values, time_ms, quantity, value, line.number)
         return good
 
-    def _cells(self, line: Line, text: str, layout: _Layout) -> list[str]:
+    def _cells(self, line: Line, text: str, layout: Layout) -> list[str]:
         row_cells = split(text, layout.delimiter)
         short = len(row_cells) < layout.width
         if short or (layout.exact and len(row_cells) > layout.width and any(row_cells[layout.width :])):
@@ -376,7 +294,7 @@ class _Reader:
                 )
         return row_cells
 
-    def _time(self, row_cells: list[str], layout: _Layout, row: int) -> int:
+    def _time(self, row_cells: list[str], layout: Layout, row: int) -> int:
         if layout.clock is None:
             assert self.mapping is not None
             assert self.mapping.time.step_s is not None
@@ -389,7 +307,7 @@ class _Reader:
         return layout.clock(text)
 
 
-def _boot(row_cells: list[str], layout: _Layout) -> int | None:
+def _boot(row_cells: list[str], layout: Layout) -> int | None:
     if layout.boot is None:
         return None
     try:
@@ -397,15 +315,6 @@ def _boot(row_cells: list[str], layout: _Layout) -> int | None:
     except ValueError:
         return None
     return int(value) if isfinite(value) and 0 <= value < 2**53 and value == int(value) else None
-
-
-def _index(column: Column, headings: list[str]) -> int:
-    if isinstance(column, int):
-        return column - 1
-    if column not in headings:
-        near = suggestion(column, headings)
-        raise PayloadError(f"The mapping reads the column {shortened(column)}, which the header does not have{near}.")
-    return headings.index(column)
 
 
 def _position(source: BinaryIO) -> int:

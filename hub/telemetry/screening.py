@@ -33,9 +33,9 @@ SPIKE_C: Final = 15.0
 SPIKE_OF_LEVEL: Final = 0.30
 # Common practice, no source: a value that repeats to the last digit is stuck where noise of a step at least is to be
 # expected: for 30 min on a voltage while the current moves enough to move it by two of its own steps, for 2 h on a
-# thermometer that otherwise flickers or whose companion moved by 2 °C. Ten readings at least, so that rare reports are
-# not judged. The voltage to expect is reckoned with 30 milliohm a cell of 1.25 V and a converter step of 4 mV where the
-# series shows no smaller one.
+# thermometer that flickers before and after or whose companion moved by 2 °C. Ten readings at least, so that rare
+# reports are not judged. The voltage to expect is reckoned with 30 milliohm a cell of 1.25 V and a converter step of
+# 4 mV where the series shows no smaller one.
 FROZEN_VOLTAGE_MS: Final = 30 * 60 * 1000
 FROZEN_CURRENT_STEP_A: Final = 0.1
 FROZEN_OHM_PER_V: Final = 0.030 / 1.25
@@ -226,7 +226,8 @@ def _frozen(name: str, values: Floats, series: Series, neighbour_ms: int) -> Mas
     for first, last in zip(firsts[long].tolist(), lasts[long].tolist(), strict=True):
         stretch = slice(int(at[first]), int(at[last]) + 1)
         if name in THERMOMETERS:
-            rest = np.concatenate([repeats[:first], repeats[last:]])
+            around = last - first  # only what lies next to the run; by night a thermometer may rest for hours
+            rest = np.concatenate([repeats[max(0, first - around) : first], repeats[last : last + around]])
             flickers = rest.size >= FROZEN_READINGS and 1 - rest.mean() >= FROZEN_FLICKER
             companion = next(other for other in THERMOMETERS if other != name)
             stuck = flickers or _span(series.get(companion)[stretch]) >= FROZEN_COMPANION_C

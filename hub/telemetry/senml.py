@@ -5,7 +5,7 @@ path: a typed parse that refuses every other field, and one loop. Whatever it re
 path, which knows the whole of the standard and says record by record what was wrong.
 """
 
-from collections.abc import Iterable, Iterator, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from functools import lru_cache
 from math import isfinite
@@ -16,24 +16,16 @@ import msgspec
 from hub.errors import PayloadError
 from hub.quantities import BY_NAME, MESSAGE_FIELDS
 from hub.telemetry import packs
-from hub.telemetry.gather import LARGEST, add_count, add_value, set_times_aside
+from hub.telemetry.gather import LARGEST, add_count, add_unknown, add_value, set_times_aside
 from hub.telemetry.message import Message, Remark, Values
-from hub.telemetry.units import conversion, misfit, shortened
+from hub.telemetry.records import LATEST_S, MAX_TEXT, combined
+from hub.telemetry.units import conversion, misfit
 
 MAX_PAYLOAD_BYTES: Final = 1 << 20
 MAX_RECORDS: Final = 50_000
-# Names and units are repeated into every record and remembered, so they must not be long.
-MAX_TEXT: Final = 255
 
 # Below this a time counts from the moment of receipt, from here on it is Unix time (RFC 8428, section 4.5.3).
 RELATIVE_BELOW_S: Final = 2**28
-# A time beyond this (the year 5138) is no time; the bound keeps the arithmetic in milliseconds exact.
-LATEST_S: Final = 1e11
-
-# Version 10 is that of RFC 8428; RFC 9100 reads it as features 1 and 3, reserved for that purpose, and gives
-# feature 4, worth 16, to secondary units.
-VERSION: Final = 10
-SECONDARY_UNITS: Final = 1 << 4
 
 Content = Literal["json", "cbor"]
 
@@ -126,7 +118,7 @@ def resolve(
         Resolved(
             r.name, r.unit, r.at_s if r.at_s >= RELATIVE_BELOW_S else received_s + r.at_s, r.value, r.sum, r.update_s
         )
-        for r in _combined(records, remarks)
+        for r in combined(records, remarks)
     ]
     return sorted(found, key=lambda record: record.time_s)
 
@@ -145,9 +137,7 @@ class _Plain(msgspec.Struct, forbid_unknown_fields=True, gc=False):
 
 
 _PLAIN_JSON: Final = msgspec.json.Decoder(list[_Plain])
-_PLAIN_LABELS: Final = frozenset({-4, -3, -2, 0, 1, 2, 6})
-_NUMBERS: Final = frozenset({int, float})
-_TEXTS: Final = frozenset({str, type(None)})
+_PLAIN_LABELS: Final = {key: label for key, label in packs.LABELS.items() if label in _Plain.__struct_fields__}
 
 
 class _NotPlainError(Exception):
@@ -168,28 +158,13 @@ def _plain_json(payload: bytes, received_ms: int) -> Message | None:
 
 def _plain_cbor(pack: list[Any], received_ms: int) -> Message | None:
     try:
-        return _fold(_cbor_records(pack), received_ms, Message())
-    except _NotPlainError:
+        named = [{_PLAIN_LABELS[key]: value for key, value in record.items()} for record in pack]
+        return _fold(msgspec.convert(named, list[_Plain]), received_ms, Message())
+    except (AttributeError, KeyError, msgspec.ValidationError, _NotPlainError):
         return None
 
 
-def _cbor_records(pack: list[Any]) -> Iterator[_Plain]:
-    for record in pack:
-        if type(record) is not dict or not _PLAIN_LABELS.issuperset(record):
-            raise _NotPlainError
-        get = record.get
-        value: Any = get(2)
-        time, name, unit, bn, bt, bu = get(6, 0.0), get(0, ""), get(1), get(-2), get(-3), get(-4)
-        if type(value) not in _NUMBERS or type(time) not in _NUMBERS or type(name) is not str:
-            raise _NotPlainError
-        if not (type(unit) in _TEXTS and type(bn) in _TEXTS and type(bu) in _TEXTS):
-            raise _NotPlainError
-        if bt is not None and type(bt) not in _NUMBERS:
-            raise _NotPlainError
-        yield _Plain(value, name, unit, time, bn, bt, bu)
-
-
-def _fold(records: Iterable[_Plain], received_ms: int, message: Message) -> Message:
+def _fold(records: list[_Plain], received_ms: int, message: Message) -> Message:
     readings = message.readings
     places: dict[str, tuple[str | None, _Place]] = {}
     base_name, base_unit, base_time = "", None, 0.0
@@ -255,7 +230,7 @@ def _place(full_name: str, unit: str | None) -> _Place:
         return _Place(name, 1, 1, 0, "")
     quantity = BY_NAME.get(name)
     if quantity is None:
-        return _Place(name[:64], 1, 1, 0, "")
+        return _Place(name, 1, 1, 0, "")
     found = conversion(quantity, unit)
     if found is None:
         assert unit is not None
@@ -268,7 +243,7 @@ def _aside(message: Message, name: str, trouble: str, value: float, time_ms: int
     if not trouble and name in MESSAGE_FIELDS:
         add_count(message, name, stated)
     elif not trouble:
-        message.unknown[name] = message.unknown.get(name, 0) + 1
+        add_unknown(message, name)
     else:
         quantity = name if name in BY_NAME else None
         reason = "unit" if quantity else "malformed"
@@ -282,144 +257,12 @@ def _general(pack: list[Any], received_ms: int) -> Message:
     message = Message()
     plain: list[_Plain] = []
     records = [packs.labelled(record) if isinstance(record, Mapping) else record for record in pack]
-    for record in _combined(records, message.remarks):
+    for record in combined(records, message.remarks):
         if isinstance(record.value, float):
             plain.append(_Plain(record.value, record.name, record.unit, record.at_s))
         else:
             message.ignored += 1
     return _fold(plain, received_ms, message)
-
-
-@dataclass(frozen=True, slots=True)
-class _Combined:
-    """A record with its base fields applied and its time still as it was sent."""
-
-    name: str
-    unit: str | None
-    at_s: float
-    value: float | str | bool | bytes | None
-    sum: float | None
-    update_s: float | None
-
-
-@dataclass(slots=True)
-class _Base:
-    """Base fields in force, by their labels."""
-
-    bn: str = ""
-    bt: float = 0.0
-    bu: str | None = None
-    bv: float = 0.0
-    bs: float | None = None
-    bver: int | None = None
-
-
-def _combined(records: Sequence[Any], remarks: list[Remark] | None) -> Iterator[_Combined]:
-    base = _Base()
-    for number, record in enumerate(records, 1):
-        if isinstance(record, Mapping):
-            _set_base(base, record, number)
-        try:
-            found = _combine(base, record, number)
-        except PayloadError as problem:
-            if remarks is None:
-                raise
-            remarks.append(Remark("malformed", str(problem)))
-            continue
-        if found is not None:
-            yield found
-
-
-def _set_base(base: _Base, record: Mapping[str, Any], number: int) -> None:
-    """Take the base fields of a record. What is wrong with one spoils every record after it, so it raises."""
-    for label in record:
-        if isinstance(label, str) and label.endswith("_"):
-            raise PayloadError(
-                f"Record {number} has the field {shortened(label)}, which must be understood and is not; leave it out."
-            )
-    if "bver" in record:
-        base.bver = _version(record["bver"], base.bver, number)
-    for label in ("bn", "bu"):
-        if label in record:
-            if not isinstance(record[label], str) or len(record[label]) > MAX_TEXT:
-                raise PayloadError(
-                    f"Record {number}: {label} must be text of at most {MAX_TEXT} characters; "
-                    "the pack cannot be read without it."
-                )
-            setattr(base, label, record[label])
-    for label in ("bt", "bv", "bs"):
-        if label in record:
-            value = packs.number(record[label])
-            if value is None or not isfinite(value):
-                raise PayloadError(
-                    f"Record {number}: {label} must be a finite number; the pack cannot be read without it."
-                )
-            setattr(base, label, value)
-
-
-def _version(stated: Any, before: int | None, number: int) -> int:  # noqa: ANN401 - anything a parser yields
-    if isinstance(stated, bool) or not isinstance(stated, int) or stated < 1:
-        raise PayloadError(
-            f"Record {number}: the version bver must be a whole number above 0; send 10 or leave it out."
-        )
-    if stated > VERSION and stated != VERSION + SECONDARY_UNITS:
-        raise PayloadError(
-            f"Record {number} is of a SenML version the hub does not know; send version {VERSION}, or "
-            f"{VERSION + SECONDARY_UNITS} with secondary units (RFC 9100)."
-        )
-    if before is not None and before != stated:
-        raise PayloadError(f"Record {number} changes the version within the pack; all records must be of one version.")
-    return stated
-
-
-def _combine(base: _Base, record: Any, number: int) -> _Combined | None:  # noqa: ANN401 - anything a parser yields
-    if not isinstance(record, Mapping):
-        raise PayloadError(f"Record {number} is no object with fields.")
-    kinds = [label for label in ("v", "vs", "vb", "vd") if label in record]
-    if not kinds and "s" not in record and not {"n", "u", "t", "ut"} & record.keys():
-        return None  # only sets base fields, as in the first example of section 5.1.7
-    name, unit = record.get("n", ""), record.get("u", base.bu)
-    if not isinstance(name, str) or not (unit is None or isinstance(unit, str)):
-        raise PayloadError(f"Record {number}: name and unit must be text.")
-    if len(base.bn) + len(name) > MAX_TEXT or (unit is not None and len(unit) > MAX_TEXT):
-        raise PayloadError(f"Record {number}: name and unit have at most {MAX_TEXT} characters; shorten them.")
-    name = base.bn + name
-    if not packs.legal_name(name):
-        raise PayloadError(f"Record {number}: {packs.illegal(name)}")
-    at = base.bt + _finite(record, "t", 0.0, name)
-    if not -LATEST_S < at < LATEST_S:
-        raise PayloadError(f"Record {number}: the time of {shortened(name)} is no time; send Unix seconds.")
-    if len(kinds) > 1 or not (kinds or "s" in record):
-        held = " and ".join(kinds) or "no value"
-        raise PayloadError(f"Record {number} ({shortened(name)}) has {held}; a record carries exactly one value.")
-    total = _finite(record, "s", 0.0, name) + (base.bs or 0.0) if "s" in record or base.bs is not None else None
-    update = _finite(record, "ut", 0.0, name) if "ut" in record else None
-    value = _value(base, record, kinds[0], name) if kinds else None
-    return _Combined(name, unit, at, value, total, update)
-
-
-def _finite(record: Mapping[str, Any], label: str, default: float, name: str) -> float:
-    value = packs.number(record.get(label, default))
-    if value is None or not isfinite(value):
-        raise PayloadError(f"The field {label} of {shortened(name)} is no finite number; send a number.")
-    return value
-
-
-def _value(base: _Base, record: Mapping[str, Any], kind: str, name: str) -> float | str | bool | bytes:
-    value = record[kind]
-    if kind == "v":
-        stated = packs.number(value)
-        if stated is None:
-            raise PayloadError(f"The value of {shortened(name)} is no number; send it without quotation marks.")
-        return base.bv + stated
-    if kind == "vs" and isinstance(value, str):
-        return value
-    if kind == "vb" and isinstance(value, bool):
-        return value
-    data = packs.data(value) if kind == "vd" else None
-    if data is None:
-        raise PayloadError(f"The field {kind} of {shortened(name)} holds something of another type.")
-    return data
 
 
 def _check_size(records: Sequence[Any]) -> None:

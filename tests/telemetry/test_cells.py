@@ -14,6 +14,7 @@ from hub.telemetry.cells import decimals, number, split
         ('"aaa","b,bb","c""c"', ",", ["aaa", "b,bb", 'c"c']),
         ("1,5;2", ";", ["1,5", "2"]),
         (" a , b ", ",", [" a ", " b "]),
+        ("2026  1   3.5 ", " ", ["2026", "1", "3.5"]),
     ],
 )
 def test_cells_of_a_line(text, delimiter, expected):

@@ -3,7 +3,7 @@ from math import inf, nan
 import pytest
 
 from hub.quantities import CATALOGUE
-from hub.telemetry.gather import LARGEST, add_count, add_value, set_times_aside, time_problem
+from hub.telemetry.gather import LARGEST, add_count, add_unknown, add_value, set_times_aside, time_problem
 from hub.telemetry.message import EARLIEST_MS, FUTURE_LIMIT_MS, Message
 
 NOW = 1_780_000_000_000
@@ -68,3 +68,15 @@ def test_readings_at_impossible_times_move_to_the_remarks_with_their_values():
         ("future", NOW + 3_600_000, ahead),
         ("too-old", 946_684_800_000, old),
     ]
+
+
+def test_thousands_of_unknown_names_do_not_fill_a_page():
+    message = Message()
+    for i in range(1000):
+        add_unknown(message, f"name-{i}")
+    add_unknown(message, "name-1")
+    add_unknown(message, "x" * 1000)
+    assert len(message.unknown) == 101
+    assert message.unknown["name-1"] == 2
+    assert message.unknown["(others)"] == 901
+    assert sum(message.unknown.values()) == 1002

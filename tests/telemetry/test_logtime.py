@@ -69,7 +69,10 @@ def berlin(rule=None):
 def test_a_pattern_with_a_zone():
     assert berlin()("01.06.2026 12:00") == utc_ms(2026, 6, 1, 10)
     assert clock("%Y-%m-%d %H:%M:%S", None, "+01:00")("2026-06-01 12:00:00") == utc_ms(2026, 6, 1, 11)
+    assert clock("%Y-%m-%d %H:%M:%S", None, "Z")("2026-06-01 12:00:00") == utc_ms(2026, 6, 1, 12)
     assert clock("%Y-%m-%d %H:%M:%S%z")("2026-06-01 12:00:00-0200") == utc_ms(2026, 6, 1, 14)
+    with pytest.raises(PayloadError, match="state timezone or utc_offset"):
+        clock("%Y-%m-%d %H:%M")("2026-06-01 12:00")
     with pytest.raises(PayloadError, match="not written as"):
         berlin()("2026-06-01 12:00")
 

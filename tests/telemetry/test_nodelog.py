@@ -119,7 +119,7 @@ def test_a_whole_last_line_needs_no_line_end():
 
 def test_a_header_may_change_its_columns_its_delimiter_and_its_decimal_sign():
     log = read(
-        "time,pack_voltage_V\n1780000000,10.0\ntime;pack_current_mA;pack_voltage_V\n1780000001;482,5;10,1\ntime\tuptime_ms\n1780000002\t1500\n"
+        "time,pack_voltage_V\n1780000000,10.0\ntime;pack_current_mA;pack_voltage_V\n1780000001,0;482,5;10,1\ntime\tuptime_ms\n1780000002\t1500\n"
     )
     assert log.message.readings == {
         MS: {"pack_voltage": 10.0},
@@ -176,6 +176,12 @@ def test_a_foreign_log_is_refused_with_its_header_its_columns_and_an_example():
     for data in ("time,wind\n1,2\n", "1780000000,10.4\n", "x\n" * 1000, b"\0\n" * 1000, "pack_voltage_V\n10\n"):
         with pytest.raises(PayloadError, match="write a mapping"):
             read(data)
+
+
+def test_endless_lines_and_lines_without_a_time_are_set_aside():
+    log = read("time,pack_voltage_V\n" + "9" * 100_000 + "\n,10\n1780000000,10\n")
+    assert log.taken == 1
+    assert aside(log) == [(2, "line"), (3, "line")]
 
 
 def test_empty_files_have_no_readings():
@@ -240,14 +246,14 @@ def test_a_log_without_times_counts_its_rows_from_the_start():
     }
 
 
-@pytest.mark.parametrize(("last", "expected"), [(False, 3), (True, 1)])
-def test_the_data_may_begin_at_the_first_or_the_last_of_several_marks(last, expected):
+@pytest.mark.parametrize(("last", "skipped", "taken"), [(False, 1, 2), (True, 3, 1)])
+def test_the_data_may_begin_at_the_first_or_the_last_of_several_marks(last, skipped, taken):
     data = b"banner\n5,10\n1780000000,1\n5,10\n1780000002,2\n"
     chosen = mapping(header=False, skip_until="5,", skip_until_last=last)
     for source in (data, io.BytesIO(data)):
         log = read(source, mapping=chosen)
-        assert log.taken == (2 if not last else 1)
-        assert len([r for r in log.set_aside if "before the one" in r.detail]) == 4 - expected if last else 1
+        assert log.taken == taken
+        assert len([r for r in log.set_aside if "before the one" in r.detail]) == skipped
     with pytest.raises(PayloadError, match="No line begins with “zzz”"):
         read(data, mapping=mapping(header=False, skip_until="zzz"))
 
