@@ -1,13 +1,11 @@
 """What ``packfold demo`` does: a hub on loopback with invented nodes that speak to it as real ones would."""
 
-import json
 import shutil
 import socket
 import subprocess
 import sys
 import threading
 from pathlib import Path
-from typing import TypedDict
 
 import msgspec
 import platformdirs
@@ -16,6 +14,7 @@ from hub.app import Hub
 from hub.cli.common import Context, now_ms, progress, say
 from hub.cli.running import stop_signal
 from hub.demo import scenario
+from hub.demo.__main__ import Order, moment
 from hub.errors import PackfoldError, UsageError
 from hub.jobs.analysis import bring_up_to_date
 from hub.mqtt.credentials import hash_secret, new_secret
@@ -30,13 +29,6 @@ PREFERRED_WEB_PORT = 8740
 # Live readings come every ten seconds; figures that follow within a quarter of a minute feel alive.
 ANALYSIS_S = 15.0
 SETTLE_S = 120.0
-
-
-class Login(TypedDict):
-    """A node's login at the broker."""
-
-    username: str
-    secret: str
 
 
 def demonstrate(
@@ -54,8 +46,9 @@ def demonstrate(
     settings = _settings(listen, broker_port)
     demo_context = Context(None, folder)
     demo_context.settings = settings
+    now = now_ms()
     with demo_context.database() as database:
-        logins, link = _prepare(database, days)
+        logins, link = _prepare(database, days, now)
     say(f"Data of the demonstration: {folder}")
     hub = Hub(settings, folder, say=say, now_ms=now_ms)
     with stop_signal() as stop:
@@ -63,7 +56,7 @@ def demonstrate(
         try:
             say(f"Open the pages with this link, once: {settings.web.url}/enter/{link}")
             assert hub.port is not None
-            nodes = _Nodes(hub.port, settings.broker.root, logins, days, live=not history_only)
+            nodes = _Nodes(Order(hub.port, settings.broker.root, logins, days, now, live=not history_only))
             try:
                 nodes.play(stop)
                 if history_only:
@@ -125,17 +118,16 @@ def _any_free_port() -> int:
         return port
 
 
-def _prepare(database: Database, days: int) -> tuple[dict[str, Login], str]:
+def _prepare(database: Database, days: int, now: int) -> tuple[dict[str, tuple[str, str]], str]:
     """Load the scenario's inventory; logins for its nodes, and a one-use link to the pages."""
-    now = now_ms()
-    rows = inventory_file.parse(scenario.inventory_toml(now, days), "the scenario")
-    logins: dict[str, Login] = {}
+    rows = inventory_file.parse(scenario.inventory_toml(moment(now), days), "the scenario")
+    logins: dict[str, tuple[str, str]] = {}
     with database.write() as connection:
         inventory_change.apply(connection, rows, who="demonstration", now_ms=now)
         for name, node_id in inventory.node_ids(connection).items():
             secret = new_secret()
             people.put_credential(connection, node_id, hash_secret(secret), now)
-            logins[name] = {"username": name, "secret": secret}
+            logins[name] = (name, secret)
         people.put_account(connection, "keeper", hash_password(new_secret()), "keeper", now)
         keeper = people.account(connection, "keeper")
         assert keeper is not None
@@ -146,29 +138,29 @@ def _prepare(database: Database, days: int) -> tuple[dict[str, Login], str]:
 class _Nodes:
     """The simulated nodes, in a process of their own: they reach the hub through the broker alone."""
 
-    def __init__(self, port: int, root: str, logins: dict[str, Login], days: int, *, live: bool) -> None:
-        self._order = {"port": port, "root": root, "logins": logins, "days": days, "live": live}
+    def __init__(self, order: Order) -> None:
+        self._order = order
         self._child = subprocess.Popen(
             [sys.executable, "-m", "hub.demo"], stdin=subprocess.PIPE, stdout=subprocess.PIPE, text=True
         )
 
     def play(self, stop: threading.Event) -> None:
-        """Until the history is sent and receipted, with a progress bar."""
+        """Until the history is sent, with a progress bar."""
         assert self._child.stdin is not None
         assert self._child.stdout is not None
-        self._child.stdin.write(json.dumps(self._order))
+        self._child.stdin.write(msgspec.json.encode(self._order).decode())
         self._child.stdin.close()
         with progress("History, readings", None) as told:
             for line in self._child.stdout:
                 if stop.is_set():
                     return
-                told_so_far = json.loads(line)
-                if "error" in told_so_far:
-                    raise PackfoldError(told_so_far["error"])
-                if told_so_far.get("history") == "done":
-                    return
-                told(told_so_far["readings"])
-        if self._child.wait(timeout=SETTLE_S) != 0:
+                said = msgspec.json.decode(line)
+                if "error" in said:
+                    raise PackfoldError(said["error"])
+                if "history" in said:
+                    break
+                told(said["readings"])
+        if not self._order.live and self._child.wait(timeout=SETTLE_S) != 0:
             raise PackfoldError("The simulated nodes stopped early. Start the demonstration again.")
 
     def wait(self, stop: threading.Event) -> None:
@@ -187,5 +179,3 @@ class _Nodes:
                 self._child.kill()
         if self._child.stdout is not None:
             self._child.stdout.close()
-
-

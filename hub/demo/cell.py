@@ -184,7 +184,7 @@ class Pack:
         if current_a > 0.0:
             # At 0.1 It a cell takes 70 % at 45 °C and 45 % at 60 °C (Battery University BU-410); less is lost when
             # charged faster. Nearly all is stored up to about 70 %, then ever less [M].
-            warm = 0.0183 * max(0.0, t - 30.0) * min(1.0, (0.1 / rate) ** 0.6)
+            warm = 0.0183 * max(0.0, t - 30.0) * (0.1 / max(rate, 0.1)) ** 0.6
             steep = min(20.0, max(4.0, 8.0 * (rate / 0.1) ** 0.3))
             oxygen_v = 0.085 + 0.04 * log10(max(rate, 0.003) / 0.1)
             return warm, steep, oxygen_v, 0.0, min(1.0, rate / 0.05) * min(t - 20.0, 50.0)

@@ -13,7 +13,7 @@ from hub.demo.cell import Pack
 from hub.demo.clock import Clock
 from hub.demo.outbox import Outbox, Packet
 from hub.demo.plant import Course, Plant
-from hub.demo.sensors import KINDS, Channel, Fault
+from hub.demo.sensors import Channel, Fault
 
 Floats = npt.NDArray[np.float64]
 Times = npt.NDArray[np.int64]
@@ -98,7 +98,6 @@ class Node:
         self._channels = [
             Channel(q, self.seed, fitout.gains.get(q, 1.0), fitout.offsets.get(q, 0.0), fitout.faults)
             for q in fitout.sends
-            if q in KINDS
         ]
         self._events = sorted(events, key=lambda e: e.at_ms)
         self._booted_ms = plant.time_ms
@@ -113,10 +112,10 @@ class Node:
     def run(self, time_ms: Times) -> Iterator[Stretch]:
         """Take readings at instants after the present one; one stretch between any two events."""
         while time_ms.size:
-            if self._events and self._events[0].at_ms < time_ms[0]:
+            if self._events and self._events[0].at_ms <= time_ms[0]:
                 self._happen(self._events.pop(0))
                 continue
-            cut = int(np.searchsorted(time_ms, self._events[0].at_ms, "right")) if self._events else time_ms.size
+            cut = int(np.searchsorted(time_ms, self._events[0].at_ms)) if self._events else time_ms.size
             yield self._read(self.plant.run(time_ms[:cut]))
             time_ms = time_ms[cut:]
 

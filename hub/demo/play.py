@@ -44,11 +44,13 @@ def play(
     root: str,
     credentials: Mapping[str, Login] | None,
     *,
+    now: dt.datetime | None = None,
     clock: Clock = time.time,
     history_days: int = scenario.HISTORY_DAYS,
     live: bool = True,
     stop: threading.Event | None = None,
     progress: Progress | None = None,
+    told_history: Callable[[], None] | None = None,
     speed: float = 1.0,
     seed: int = scenario.SEED,
     settle_s: float = 60.0,
@@ -61,10 +63,14 @@ def play(
         The broker and the first topic level.
     credentials
         Node name to user name and secret; only these nodes play. ``None``: all of them, as anonymous users.
+    now
+        Where the history ends, for a scenario that was described before; else where the clock stands at the beginning.
     clock
-        Seconds since 1970. The history ends where the clock stands at the beginning.
+        Seconds since 1970.
     progress
         Called with readings taken so far and in all, while the history is made.
+    told_history
+        Called once the history is sent.
     speed
         Seconds that pass on ``clock`` in a second of waiting; above 1 only with a clock that runs as fast.
     settle_s
@@ -77,12 +83,14 @@ def play(
     UsageError
         ``credentials`` names a node that the scenario does not have.
     """
-    now = dt.datetime.fromtimestamp(clock(), dt.UTC)
+    now = now or dt.datetime.fromtimestamp(clock(), dt.UTC)
     nodes = [scenario.build(name, now, history_days, seed) for name in credentials or scenario.NAMES]
     player = _Player(nodes, root, credentials or {}, clock, stop or threading.Event())
     try:
         player.connect(host, port)
         player.history(history_days, progress)
+        if told_history is not None:
+            told_history()
         if live:
             player.live(speed)
         else:

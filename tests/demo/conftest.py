@@ -17,6 +17,16 @@ Resolved = list[tuple[str, str | None, float, float]]
 @pytest.fixture
 def broker(tmp_path: Path) -> Iterator[int]:
     """The port of a real broker that lets anybody in, on loopback only."""
+    yield from _broker(tmp_path, "allow_anonymous true")
+
+
+@pytest.fixture
+def closed_broker(tmp_path: Path) -> Iterator[int]:
+    """The port of a real broker that lets nobody in, on loopback only."""
+    yield from _broker(tmp_path, "allow_anonymous false")
+
+
+def _broker(tmp_path: Path, rule: str) -> Iterator[int]:
     program = shutil.which("mosquitto") or shutil.which("mosquitto", path="/usr/sbin:/usr/local/sbin")
     if program is None:
         pytest.skip("needs the mosquitto broker on this machine")
@@ -24,7 +34,7 @@ def broker(tmp_path: Path) -> Iterator[int]:
         free.bind(("127.0.0.1", 0))
         port = free.getsockname()[1]
     settings = tmp_path / "broker.conf"
-    settings.write_text(f"listener {port} 127.0.0.1\nallow_anonymous true\npersistence false\n")
+    settings.write_text(f"listener {port} 127.0.0.1\n{rule}\npersistence false\n")
     with subprocess.Popen([program, "-c", str(settings)], stderr=subprocess.DEVNULL) as process:
         for _ in range(100):
             try:

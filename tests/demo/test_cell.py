@@ -100,7 +100,13 @@ def test_a_hot_cell_takes_less(air: float, share: float) -> None:
 
 def test_open_circuit_voltage_lies_in_the_published_bands() -> None:
     # From memory of makers' handbooks, rested at 20 °C; the gap between the branches is 20 to 60 mV.
-    for level, low, high in [(0.04, 1.19, 1.23), (0.2, 1.25, 1.27), (0.5, 1.27, 1.29), (0.8, 1.29, 1.32), (1, 1.35, 1.40)]:
+    for level, low, high in [
+        (0.04, 1.19, 1.23),
+        (0.2, 1.25, 1.27),
+        (0.5, 1.27, 1.29),
+        (0.8, 1.29, 1.32),
+        (1, 1.35, 1.40),
+    ]:
         assert low <= open_circuit_v(level) <= high
 
 

@@ -51,12 +51,13 @@ def test_haurwitz(elevation: float, watts: float) -> None:
 
 
 def test_daylight_lasts_as_published() -> None:
-    # Golden, 2015-08-02: sunrise 05:00:27, sunset 19:13:58 MST (reference library's tests; centre 0.833° below).
+    # Golden, 2015-08-02: sunrise 05:00:27, sunset 19:13:58 MST (reference library's tests; centre 0.833° below). By the
+    # same library's position the centre is 0.838° below at 19:12:55 already, hence the wider limit for the sunset.
     t = dt.datetime(2015, 8, 2, 7, tzinfo=dt.UTC).timestamp() + np.arange(86400.0)
     elevation, _ = sun.position(t, 39.742476, -105.1786)
     up = np.flatnonzero(elevation > -0.8333)
     assert up[0] == pytest.approx(5 * 3600 + 27, abs=60)
-    assert up[-1] == pytest.approx(19 * 3600 + 13 * 60 + 58, abs=60)
+    assert up[-1] == pytest.approx(19 * 3600 + 13 * 60 + 58, abs=75)
 
 
 def test_extraterrestrial_irradiance() -> None:
