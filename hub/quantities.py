@@ -53,14 +53,15 @@ class Quantity:
 COLUMN_SUFFIX: Final = {"V": "V", "A": "A", "Ah": "Ah", "°C": "C", "s": "s", "dBm": "dBm"}
 
 # Resolutions follow the parts: a 12-bit shunt current monitor resolves 4 mV and, on 0.1 ohm, 0.1 mA; a one-wire
-# digital thermometer 0.0625 °C. One decimal more than the part is kept so that rounding never adds to its error.
+# digital thermometer 0.0625 °C, which has four decimals. So every step of such a part is kept exactly, and voltages and
+# currents one decimal finer, for nodes that send averages.
 # Ranges: bus voltage register of such a monitor 0..32 V with room for larger packs; thermometer -55..125 °C with the
-# disconnect marker -127 °C and colder nonsense outside it (the dossier's sources for both: public driver sources).
+# disconnect marker -127 °C and colder nonsense outside it (common practice of drivers, no source).
 CATALOGUE: Final[tuple[Quantity, ...]] = (
     Quantity("pack_voltage", "V", "V", 4, 0.0, 100.0, "Pack voltage"),
     Quantity("pack_current", "A", "A", 5, -100.0, 100.0, "Pack current"),
-    Quantity("pack_temperature", "°C", "Cel", 3, -55.0, 125.0, "Pack temperature"),
-    Quantity("air_temperature", "°C", "Cel", 3, -55.0, 125.0, "Air temperature"),
+    Quantity("pack_temperature", "°C", "Cel", 4, -55.0, 125.0, "Pack temperature"),
+    Quantity("air_temperature", "°C", "Cel", 4, -55.0, 125.0, "Air temperature"),
     Quantity("panel_voltage", "V", "V", 4, 0.0, 200.0, "Panel voltage"),
     Quantity("panel_current", "A", "A", 5, -1.0, 100.0, "Panel current"),
     Quantity("load_current", "A", "A", 5, -1.0, 100.0, "Load current"),
@@ -75,6 +76,6 @@ CATALOGUE: Final[tuple[Quantity, ...]] = (
 BY_NAME: Final[dict[str, Quantity]] = {q.name: q for q in CATALOGUE}
 NAMES: Final[tuple[str, ...]] = tuple(BY_NAME)
 
-# Two plain records of a message that are not measurements: restarts so far, and the message's number within the boot.
-# ``oldest`` is the lowest sequence the node still holds, so that a receipt need not wait for what is gone for good.
+# Three plain records of a message that are no measurements: restarts so far, the message's number within the boot, and
+# the lowest number the node still holds, so that a receipt need not wait for what is gone for good.
 MESSAGE_FIELDS: Final = ("boot", "sequence", "oldest")

@@ -4,17 +4,15 @@ Every key has a default, so that no file is needed. An unknown key refuses to st
 known one: a typing error in a limit must not silently leave the default in force.
 """
 
-import difflib
 import os
 import tomllib
-import types
-from collections.abc import Iterable, Mapping
+from collections.abc import Mapping
 from pathlib import Path
-from typing import Annotated, Any, Literal, Union, get_args, get_origin, get_type_hints
+from typing import Annotated, Any, Literal, get_type_hints
 
-import msgspec
 from msgspec import Meta, Struct, field
 
+from hub import stated
 from hub.errors import SettingsError
 
 Port = Annotated[int, Meta(ge=0, le=65535)]
@@ -22,7 +20,7 @@ Seconds = Annotated[float, Meta(gt=0)]
 
 ENVIRONMENT_PREFIX = "PACKFOLD_"
 # Variables with the prefix that are not settings of the file.
-RESERVED_VARIABLES = frozenset({"PACKFOLD_SETTINGS", "PACKFOLD_DATA", "PACKFOLD_MEASURED"})
+RESERVED_VARIABLES = frozenset({"PACKFOLD_SETTINGS", "PACKFOLD_DATA", "PACKFOLD_MEASURED", "PACKFOLD_TRACE"})
 
 
 class Database(Struct, frozen=True, forbid_unknown_fields=True):
@@ -51,7 +49,8 @@ class Broker(Struct, frozen=True, forbid_unknown_fields=True):
         Which broker to start: ``mosquitto`` (Debian's, as a managed child), ``trial`` (inside the process, loopback
         only, for a first look) or ``auto``: mosquitto where it is installed, the trial broker where not.
     listen
-        Address the started broker listens on. ``127.0.0.1`` is this machine only; ``0.0.0.0`` admits nodes from outside.
+        Address the started broker listens on. ``127.0.0.1`` is this machine only; ``0.0.0.0`` lets nodes in from
+        outside.
     host, port
         The broker the collector speaks to; ``port`` is also where a started broker listens.
     tls, ca_file
@@ -77,7 +76,13 @@ class Broker(Struct, frozen=True, forbid_unknown_fields=True):
     ca_file: str = ""
     username: str = ""
     password_file: str = ""
-    root: Annotated[str, Meta(pattern=r"^[A-Za-z0-9_-]+(/[A-Za-z0-9_-]+)*$")] = "field"
+    root: Annotated[
+        str,
+        Meta(
+            pattern=r"\A[A-Za-z0-9_-]+(/[A-Za-z0-9_-]+)*\Z",
+            description="topic levels of letters, digits, - and _ with / between them, such as field",
+        ),
+    ] = "field"
     client_id: str = "packfold-collector"
     message_limit_bytes: Annotated[int, Meta(ge=1024, le=16_777_216)] = 1_048_576
     queue_limit: Annotated[int, Meta(ge=1000)] = 1_000_000
@@ -98,7 +103,10 @@ class Web(Struct, frozen=True, forbid_unknown_fields=True):
         How long a login lasts.
     """
 
-    listen: Annotated[str, Meta(pattern=r"^[^\s]+:\d{1,5}$")] = "127.0.0.1:8740"
+    listen: Annotated[
+        str,
+        Meta(pattern=r"\A[^\s]+:[0-9]{1,5}\Z", description="an address and a port, such as 127.0.0.1:8740"),
+    ] = "127.0.0.1:8740"
     base_url: str = ""
     trusted_proxy: str = ""
     session_days: Annotated[float, Meta(gt=0, le=365)] = 30
@@ -161,9 +169,9 @@ def load(path: Path | None, environment: Mapping[str, str] | None = None) -> Set
             _apply_variable(document, name, text)
     _check_keys(document, Settings, (), source)
     try:
-        settings = msgspec.convert(document, Settings)
-    except msgspec.ValidationError as error:
-        raise SettingsError(f"{source}: {_plain(str(error))}.") from None
+        settings: Settings = stated.convert(document, Settings)
+    except ValueError as error:
+        raise SettingsError(f"{source}: {error}.") from None
     _check_sense(settings, source)
     return settings
 
@@ -179,7 +187,7 @@ def _read(path: Path) -> dict[str, Any]:
         raise SettingsError(
             f"The settings file {path} cannot be read: {error.strerror}. Check its permissions."
         ) from None
-    except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
+    except (ValueError, RecursionError) as error:
         raise SettingsError(
             f"The settings file {path} is not TOML: {error}. Correct that line and try again."
         ) from None
@@ -190,12 +198,14 @@ def _apply_variable(document: dict[str, Any], name: str, text: str) -> None:
     section, _, key = name.removeprefix(ENVIRONMENT_PREFIX).lower().partition("_")
     known_sections = get_type_hints(Settings)
     if section not in known_sections:
-        raise SettingsError(f"The environment variable {name} names no section.{_suggest(section, known_sections)}")
+        raise SettingsError(
+            f"The environment variable {name} names no section.{stated.nearest(section, known_sections)}"
+        )
     kind = get_type_hints(known_sections[section]).get(key)
     if kind is None:
         raise SettingsError(
             f"The environment variable {name} names no key of [{section}]."
-            f"{_suggest(key, get_type_hints(known_sections[section]))}"
+            f"{stated.nearest(key, get_type_hints(known_sections[section]))}"
         )
     value: Any = text
     if kind is bool:
@@ -218,27 +228,10 @@ def _check_keys(table: Mapping[str, Any], struct: type, trail: tuple[str, ...], 
     for key, value in table.items():
         if key not in hints:
             where = f" in [{'.'.join(trail)}]" if trail else ""
-            raise SettingsError(f"{source}: unknown key “{key}”{where}.{_suggest(key, hints)}")
-        inner = _struct_of(hints[key])
+            raise SettingsError(f"{source}: unknown key “{key}”{where}.{stated.nearest(key, hints)}")
+        inner = stated.struct_of(hints[key])
         if inner is not None and isinstance(value, Mapping):
             _check_keys(value, inner, (*trail, key), source)
-
-
-def _struct_of(hint: Any) -> type | None:  # noqa: ANN401 - a type hint may be anything
-    if get_origin(hint) in {Union, types.UnionType, Annotated}:
-        return next((found for part in get_args(hint) if (found := _struct_of(part))), None)
-    return hint if isinstance(hint, type) and issubclass(hint, Struct) else None
-
-
-def _suggest(word: str, known: Iterable[str]) -> str:
-    names = list(known)
-    near = difflib.get_close_matches(word, names, n=1, cutoff=0.5)
-    return f" Did you mean “{near[0]}”?" if near else f" Known here: {', '.join(names)}."
-
-
-def _plain(text: str) -> str:
-    """A validator's remark as people write keys: ``at `$.broker.port``` becomes ``at broker.port``."""
-    return text.replace("`", "“", 1).replace("`", "”", 1).replace("$.", "").replace("`", "")
 
 
 def _check_sense(settings: Settings, source: str) -> None:
@@ -250,6 +243,11 @@ def _check_sense(settings: Settings, source: str) -> None:
         raise SettingsError(
             f"{source}: the trial broker serves this machine only. Set broker.listen to 127.0.0.1, or install "
             "mosquitto and set broker.kind to mosquitto to let nodes in from outside."
+        )
+    if broker.embedded and broker.tls:
+        raise SettingsError(
+            f"{source}: broker.tls concerns an outside broker, and the one the hub starts speaks plain MQTT. "
+            "Leave it out, or set broker.embedded to false."
         )
     if broker.username and not broker.password_file:
         raise SettingsError(f"{source}: broker.username needs broker.password_file beside it.")

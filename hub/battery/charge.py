@@ -22,9 +22,10 @@ import math
 from dataclasses import dataclass
 
 import numpy as np
+import numpy.typing as npt
 
 from hub.battery.spec import NodeSpec, Rule
-from hub.series import Floats, Mask, Series, Times
+from hub.series import Floats, Series, Times
 
 HOUR_S = 3600.0
 LONGEST_GAP_S = 900.0  # record interval of IEC 61724: at most 15 min
@@ -84,27 +85,38 @@ def intervals(
     usable = np.isfinite(columns[0])
     for column in columns[1:]:
         usable &= np.isfinite(column)
-    t = time_ms[usable]
-    values = np.array([column[usable] for column in columns], dtype=np.float64)
+    if not usable.all():
+        time_ms, columns = time_ms[usable], [column[usable] for column in columns]
+    # The readings inside, and the one on each side of them.
+    inside = np.searchsorted(time_ms, [start_ms, end_ms])
+    near = slice(max(int(inside[0]) - 1, 0), int(inside[1]) + 1)
+    t = time_ms[near]
+    values = np.array([column[near] for column in columns], dtype=np.float64)
+    if t.size == 0:
+        return Intervals(np.empty(0), np.empty((len(columns), 0)), np.empty((len(columns), 0)))
     length = np.diff(t)
-    keep = (length <= gap_ms) & (t[1:] > start_ms) & (t[:-1] < end_ms)
-    first, last = values[:, :-1][:, keep], values[:, 1:][:, keep]
+    first, last = values[:, :-1], values[:, 1:]
     if rule == "hold":
         first = last
-    before, whole = t[:-1][keep], length[keep].astype(np.float64)
-    opened = np.maximum(start_ms - before, 0) / whole
-    closed = np.minimum(end_ms - before, whole) / whole
-    change = last - first
-    return Intervals(
-        seconds=(closed - opened) * whole / 1000.0,
-        first=np.where(opened > 0.0, first + opened * change, first),
-        last=np.where(closed < 1.0, first + closed * change, last),
-    )
+    opened = np.maximum(start_ms - t[:-1], 0)
+    closed = np.minimum(end_ms - t[:-1], length)
+    keep = (length <= gap_ms) & (closed > opened)
+    opened, closed, length = opened[keep], closed[keep], length[keep]
+    first, last = first[:, keep], last[:, keep]
+    cut = np.flatnonzero((opened > 0) | (closed < length))
+    if cut.size:
+        change = last[:, cut] - first[:, cut]
+        begin = first[:, cut] + change * (opened[cut] / length[cut])
+        last = last.copy()
+        last[:, cut] = first[:, cut] + change * (closed[cut] / length[cut])
+        first = first.copy()
+        first[:, cut] = begin
+    return Intervals((closed - opened) / 1000.0, first, last)
 
 
 @dataclass(frozen=True, slots=True)
 class Signed:
-    """An integral over time, its positive and its negative part apart (both as positive numbers).
+    """An integral over time, its positive and its negative part apart, both as positive numbers.
 
     ``rising_s`` and ``falling_s`` are the times over which the integrand was positive and negative.
     """
@@ -120,34 +132,41 @@ def signed(seconds: Floats, first: Floats, last: Floats, factor: tuple[Floats, F
 
     The sign is that of the first quantity: energy goes where its current goes.
     """
-    crossing = first * last < 0.0
-    span = np.where(crossing, first - last, 1.0)
-    share = np.where(crossing, first / span, 1.0)  # share of the interval before the current changes its sign
-    middle = np.where(crossing, 0.0, last)
-    if factor is None:
-        before = 0.5 * share * (first + middle)
-        after = 0.5 * (1.0 - share) * (middle + last)
-    else:
-        a, b = factor
-        at = a + share * (b - a)
-        before = share * _product(first, middle, a, at)
-        after = (1.0 - share) * _product(middle, last, at, b)
-    total = 0.0, 0.0
-    times = 0.0, 0.0
-    for part, length, sign in ((before, share, first + middle), (after, 1.0 - share, last)):
-        amount = part * seconds
-        up, down = sign > 0.0, sign < 0.0
-        total = total[0] + float(amount[up].sum()), total[1] - float(amount[down].sum())
-        times = (
-            times[0] + float((length * seconds)[up].sum()),
-            times[1] + float((length * seconds)[down].sum()),
-        )
-    return Signed(total[0], total[1], times[0], times[1])
+    crossing = np.flatnonzero(first * last < 0.0)
+    if crossing.size:
+        # Cut these intervals where the quantity passes through zero.
+        a, b = first[crossing], last[crossing]
+        share = a / (a - b)
+        zero = np.zeros(crossing.size)
+        if factor is not None:
+            at = factor[0][crossing] + share * (factor[1][crossing] - factor[0][crossing])
+            factor = (
+                np.concatenate((factor[0], at)),
+                np.concatenate((_put(factor[1], crossing, at), factor[1][crossing])),
+            )
+        whole = seconds[crossing]
+        seconds = np.concatenate((_put(seconds, crossing, share * whole), (1.0 - share) * whole))
+        first, last = np.concatenate((first, zero)), np.concatenate((_put(last, crossing, zero), b))
+    sign = first + last
+    amount = (0.5 * sign if factor is None else _product(first, last, *factor)) * seconds
+    up, down = sign > 0.0, sign < 0.0
+    return Signed(
+        positive=float(amount[up].sum()),
+        negative=0.0 - float(amount[down].sum()),
+        rising_s=float(seconds[up].sum()),
+        falling_s=float(seconds[down].sum()),
+    )
+
+
+def _put(values: Floats, where: npt.NDArray[np.intp], new: Floats) -> Floats:
+    changed = values.copy()
+    changed[where] = new
+    return changed
 
 
 def _product(first: Floats, last: Floats, a: Floats, b: Floats) -> Floats:
-    """Mean over an interval of the product of two linear quantities."""
-    mean: Floats = (2.0 * first * a + first * b + last * a + 2.0 * last * b) / 6.0
+    """Mean over an interval of the product of two linear quantities (Simpson's rule, exact)."""
+    mean: Floats = (first * (2.0 * a + b) + last * (a + 2.0 * b)) / 6.0
     return mean
 
 
@@ -170,16 +189,14 @@ class Count:
 
 
 def count(series: Series, start_ms: int, end_ms: int, node: NodeSpec) -> Count:
-    """Charge and energy into and out of the pack, ``pack_current`` in A, ``pack_voltage`` in V."""
+    """Charge and energy into and out of the pack, from ``pack_current`` in A and ``pack_voltage`` in V."""
     gap = gap_limit_ms(node.interval_s)
-    current = series.get("pack_current")
+    current, volts = series.get("pack_current"), series.get("pack_voltage")
     seen = intervals(series.time_ms, [current], start_ms, end_ms, gap, node.integration)
     if not seen.observed_s:
         return Count(None, None, None, None, 0.0, 0.0, 0.0, 0.0)
     ah = signed(seen.seconds, seen.first[0], seen.last[0])
-    both = intervals(
-        series.time_ms, [current, series.get("pack_voltage")], start_ms, end_ms, gap, node.integration
-    )
+    both = intervals(series.time_ms, [current, volts], start_ms, end_ms, gap, node.integration)
     wh = signed(both.seconds, both.first[0], both.last[0], (both.first[1], both.last[1])) if both.observed_s else None
     # A step of dI somewhere inside an interval is misplaced by the trapezoid by up to half of dI * dt, evenly spread.
     steps = (seen.last[0] - seen.first[0]) * seen.seconds
@@ -195,7 +212,7 @@ def count(series: Series, start_ms: int, end_ms: int, node: NodeSpec) -> Count:
     )
 
 
-def uncertainty_ah(amount_ah: float, flowing_s: float, unseen_s: float, count_: Count, node: NodeSpec) -> float:
+def uncertainty_ah(amount_ah: float, flowing_s: float, unseen_s: float, counted: Count, node: NodeSpec) -> float:
     """Standard uncertainty of a charge or a discharge, combined in the manner of JCGM 100:2008, 5.1.2.
 
     Parameters
@@ -205,18 +222,39 @@ def uncertainty_ah(amount_ah: float, flowing_s: float, unseen_s: float, count_: 
     unseen_s
         Time of the window that neither readings nor running totals cover: there the current lay between nothing and
         what it was on average while it flowed, evenly spread.
+    counted
+        For what sampling left uncertain.
+    node
+        Gain and offset of its sensor.
     """
     mean_a = amount_ah * HOUR_S / flowing_s if flowing_s else 0.0
-    parts = (
+    return math.hypot(
         node.current_gain_error * amount_ah,
         node.current_offset_a * flowing_s / HOUR_S,
-        count_.sampling_ah,
+        counted.sampling_ah,
         mean_a * unseen_s / HOUR_S / math.sqrt(3.0),
     )
-    return math.hypot(*parts)
 
 
-def observed_s(time_ms: Times, usable: Mask, start_ms: int, end_ms: int, gap_ms: int) -> float:
-    """Time of a window that lies between neighbouring usable readings, in seconds."""
-    t = time_ms[usable]
-    return intervals(t, [np.zeros(t.size)], start_ms, end_ms, gap_ms).observed_s
+def observed_s(series: Series, start_ms: int, end_ms: int, node: NodeSpec) -> float:
+    """Time of a window that lies between neighbouring readings of any kind, in seconds."""
+    gap = gap_limit_ms(node.interval_s)
+    return intervals(series.time_ms, [np.zeros(len(series))], start_ms, end_ms, gap).observed_s
+
+
+def load_wh(series: Series, start_ms: int, end_ms: int, node: NodeSpec) -> float | None:
+    """Energy the load took, in Wh: from its own sensor, or from the assumed load of a node that does not see it.
+
+    ``None`` where neither is there, or no voltage.
+    """
+    load = series.get("load_current")
+    if not np.isfinite(load).any():
+        if node.current_sensing == "net" or node.standing_load_a <= 0.0:
+            return None
+        load = np.where(np.isfinite(series.get("pack_current")), node.standing_load_a, np.nan)
+    gap = gap_limit_ms(node.interval_s)
+    seen = intervals(series.time_ms, [load, series.get("pack_voltage")], start_ms, end_ms, gap, node.integration)
+    if not seen.observed_s:
+        return None
+    taken = signed(seen.seconds, seen.first[0], seen.last[0], (seen.first[1], seen.last[1]))
+    return (taken.positive - taken.negative) / HOUR_S

@@ -66,10 +66,7 @@ def rest_offset_a(series: Series, node: NodeSpec) -> float | None:
     A found offset that is not significant is 0.0: known to be small, and nothing is taken off.
     """
     current = series.get("pack_current")
-    if node.current_sensing == "charge-only":
-        expected = np.zeros(len(series))
-    else:
-        expected = -series.get("load_current")
+    expected = np.zeros(len(series)) if node.current_sensing == "charge-only" else -series.get("load_current")
     deviation = current - expected
     rest = _charger_off(series) & np.isfinite(deviation)
     found = deviation[rest]

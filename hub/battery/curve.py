@@ -12,14 +12,16 @@ from hub.battery.flow import Flow
 from hub.battery.spec import NodeSpec, PackSpec
 from hub.series import Floats, Times
 
-# Half a percent of the pack's charge passes in one step, but no step is longer than two minutes.
-STEP_IT_S = 18.0
+# A six-hundredth of the pack's charge passes in one step, but no step is longer than two minutes.
+STEP_IT_S = 6.0
 SHORTEST_S = 10.0
 LONGEST_S = 120.0
 # Apparent resistance of a cell times its capacity: 25 mohm at 1 kHz for 2 Ah (dossier section 3), twice that over some
 # seconds (section 1.6), as uncertain as it is large.
 TYPICAL_OHM_AH = 0.10
-SLOW_S = 300.0
+# Currents that count are above a quarter of the usual one.
+OF_NOTE = 0.25
+LEAST_STEPS = 3
 
 
 @dataclass(frozen=True, slots=True)
@@ -41,7 +43,7 @@ class Curve:
     resistance_ohm
         Of the whole pack, from steps of current between neighbouring steps of the curve.
     noise_v
-        Standard deviation of ``cell_v`` from one step to the next.
+        Standard deviation of ``cell_v`` within a step, from how it bends between neighbours.
     """
 
     time_ms: Times
@@ -70,10 +72,10 @@ def curve(flow: Flow, first: int, last: int, pack: PackSpec, node: NodeSpec) -> 
     means = _Means(which)
     mean_a, mean_v = means(current), means(volts)
     middle = t[0] + ((means.steps + 0.5) * step_s * 1000.0).astype(np.int64)
-    resistance = step_resistance(mean_a, mean_v, step_s, pack)
+    resistance = step_resistance(mean_a, mean_v, pack)
     cell = (mean_v - resistance * mean_a) / pack.cells_in_series
-    jumps = np.diff(cell)
-    jumps = jumps[np.isfinite(jumps)]
+    bends = np.diff(cell, 2)
+    bends = bends[np.isfinite(bends)]
     return Curve(
         time_ms=middle,
         step_s=step_s,
@@ -84,28 +86,32 @@ def curve(flow: Flow, first: int, last: int, pack: PackSpec, node: NodeSpec) -> 
         cell_v=cell,
         charge_ah=means(charge),
         resistance_ohm=resistance,
-        noise_v=1.4826 * float(np.median(np.abs(jumps - np.median(jumps)))) / np.sqrt(2.0) if jumps.size else 0.0,
+        noise_v=1.4826 * float(np.median(np.abs(bends))) / np.sqrt(6.0) if bends.size else 0.0,
     )
 
 
-def step_resistance(mean_a: Floats, mean_v: Floats, step_s: float, pack: PackSpec) -> float:
+def step_resistance(mean_a: Floats, mean_v: Floats, pack: PackSpec) -> float:
     """Apparent resistance of the pack from its answers to steps of current, in ohm.
 
-    A straight line through the differences of neighbouring means, drawn a second time without the outliers. Where the
-    current hardly changes it tells nothing, so the fit starts from a typical cell with an uncertainty as large.
+    A straight line through second differences of neighbouring means, drawn again without the outliers: differences of
+    differences know nothing of a drift that both share on a clear morning. Only currents of note count: below, the
+    voltage is no straight line of the current. Where the current hardly steps nothing is known, so the fit starts from
+    a typical cell with an uncertainty as large.
     """
     typical = TYPICAL_OHM_AH * pack.cells_in_series / pack.rated_capacity_ah
-    di, dv = np.diff(mean_a), np.diff(mean_v)
-    known = np.isfinite(di) & np.isfinite(dv)
-    di, dv = di[known], dv[known]
-    if di.size < 3:
+    known = mean_a[np.isfinite(mean_a)]
+    if known.size < LEAST_STEPS:
         return typical
-    dv = dv - np.median(dv)
+    strong = (mean_a > OF_NOTE * float(np.percentile(known, 90))) & np.isfinite(mean_v)
+    use = strong[2:] & strong[1:-1] & strong[:-2]
+    di, dv = np.diff(mean_a, 2)[use], np.diff(mean_v, 2)[use]
+    if di.size == 0:
+        return typical
     r = typical
     for _ in range(3):
         off = dv - r * di
-        spread = 1.4826 * float(np.median(np.abs(off - np.median(off)))) + 1e-4
-        keep = np.abs(off - np.median(off)) < 3.0 * spread
+        spread = 1.4826 * float(np.median(np.abs(off))) + 1e-4 * pack.cells_in_series
+        keep = np.abs(off) < 3.0 * spread
         weight = (spread / typical) ** 2
         r = float((di[keep] @ dv[keep] + weight * typical) / (di[keep] @ di[keep] + weight))
     return min(max(r, 0.0), 5.0 * typical)

@@ -1,6 +1,7 @@
 """The commands: parse, delegate, and turn every complaint into one sentence and an exit code."""
 
 import importlib
+import os
 import sys
 from pathlib import Path
 
@@ -87,5 +88,14 @@ def main() -> None:
     except BrokenPipeError:
         # The reader of our output went away (``packfold export … | head``).
         sys.stderr.close()
+        sys.exit(1)
+    except Exception as error:
+        if os.environ.get("PACKFOLD_TRACE"):
+            raise
+        click.echo(
+            f"packfold: something unexpected happened ({type(error).__name__}: {error}). This is a fault in Packfold, not "
+            "yours; what was stored before is safe. Run it again with PACKFOLD_TRACE=1 to see where, and report that.",
+            err=True,
+        )
         sys.exit(1)
     sys.exit(status if isinstance(status, int) else 0)

@@ -11,6 +11,7 @@ from hub.cli.common import Context, format_option, progress, report, say
 from hub.errors import UsageError
 from hub.jobs.analysis import Done, bring_up_to_date
 from hub.store import export as store_export
+from hub.store.export_rows import instant
 
 
 @click.command()
@@ -20,7 +21,7 @@ from hub.store import export as store_export
 @click.pass_obj
 def analyse(context: Context, node: str | None, since: str | None, form: str) -> None:
     """Bring all figures up to date now: the same code as the schedule. A second run changes nothing."""
-    store_export.instant(since)
+    instant(since)
     with context.database() as database, progress("Days", None) as told:
         done = bring_up_to_date(database, node=node, since=since, progress=lambda d: told(d.computed + d.unchanged))
     report(form, asdict(done), [sentence(done)])

@@ -1,7 +1,7 @@
 """The simulated nodes as a program of their own, so that they reach the hub through the broker alone.
 
-Reads one ``Order`` as JSON from standard input; says how far it is as one JSON object a line: ``{"readings", "of"}`` while
-the history is made, ``{"history": "sent"}`` when it is out, ``{"error"}`` if it cannot go on.
+Reads one ``Order`` as JSON from standard input; says how far it is as one JSON object a line: ``{"readings", "of"}``
+while the history is made, ``{"history": "sent"}`` when it is out, ``{"error"}`` if it cannot go on.
 """
 
 import datetime as dt

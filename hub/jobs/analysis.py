@@ -16,6 +16,7 @@ from dataclasses import asdict, dataclass
 from hub.battery.day import METHOD_VERSION, Carried
 from hub.errors import InventoryError
 from hub.jobs.compute import Subject, compute, subject_of
+from hub.jobs.skies import Skies
 from hub.jobs.windows import DayWindow, windows
 from hub.store import figures, inventory, measured, readings
 from hub.store.engine import Database
@@ -95,6 +96,7 @@ class _Fold:
         self._since = since
         self._done = done
         self._progress = progress
+        self._skies = Skies(database, node_id)
         self._pending: list[Written] = []
         self._pending_since = time.monotonic()
 
@@ -103,11 +105,13 @@ class _Fold:
             hours, revisions = readings.changed_hours(connection, self._node_id)
             ledger = figures.entries(connection, self._node_id)
             packs = inventory.pack_ids(connection)
+            ends = readings.bounds(connection, self._node_id)
         site = self._known.site_of(self._node)
         carried = Carried()
         kept: set[int] = set()
+        newest_ms = ends[1] if ends is not None else 0
         for window in windows(hours, site.timezone, self._known.fitted(self._node.name)):
-            subject = subject_of(self._known, self._node, window)
+            subject = subject_of(self._known, self._node, window, newest_ms)
             inputs = _digest(subject, carried, _revision(hours, revisions, window, carried))
             entry = ledger.get(window.start_ms)
             kept.add(window.start_ms)
@@ -134,12 +138,11 @@ class _Fold:
                 subject.calibrations,
                 self._node.current_full_scale_a,
             )
-        result = compute(found, subject, carried)
+        sky = self._skies.over(subject) if len(found.series.between(window.start_ms, subject.until_ms)) else None
+        result = compute(found, subject, carried, sky)
         pack_id = None if window.pack is None else packs[window.pack]
-        entry = Entry(
-            window.start_ms, window.end_ms, window.date, inputs, result.carried.to_json(), result.newest_ms
-        )
-        day = {**result.day, "pack_id": pack_id}
+        entry = Entry(window.start_ms, window.end_ms, window.date, inputs, result.carried.to_json(), result.newest_ms)
+        day = None if result.day is None else {**result.day, "pack_id": pack_id}
         charges = [{**row, "pack_id": pack_id} for row in result.charges]
         self._pending.append(Written(entry, day, charges, result.findings))
         if time.monotonic() - self._pending_since > LOCK_S:

@@ -83,7 +83,9 @@ def start_broker(settings: Broker, data: Path, database: Database) -> RunningBro
         mosquitto.start()
         return mosquitto
     if settings.kind == "mosquitto":
-        raise BrokerError("Mosquitto is not installed. Install it (“apt install mosquitto”), or set broker.kind to trial.")
+        raise BrokerError(
+            "Mosquitto is not installed. Install it (“apt install mosquitto”), or set broker.kind to trial."
+        )
     if settings.listen not in LOOPBACK:
         raise BrokerError(
             "Mosquitto is not installed, and the trial broker serves this machine only. Install mosquitto to let nodes "
@@ -102,8 +104,11 @@ def try_login(settings: Broker, data: Path) -> str:
     At a broker that the hub started this uses a login of its own without any rights, so that the hub keeps its session.
     """
     try:
-        access = access_for_selfcheck(data) if settings.embedded else _outside_access(settings, f"{settings.client_id}-check")
-        client = new_client(access, clean=True)
+        if settings.embedded:
+            access = access_for_selfcheck(data)
+        else:
+            access = _outside_access(settings, f"{settings.client_id}-check")
+        client = new_client(paho.Client, access, clean=True)
     except BrokerError as error:
         return str(error)
     answered = threading.Event()
@@ -133,9 +138,9 @@ def _outside_access(settings: Broker, client_id: str) -> Access:
         try:
             password = Path(settings.password_file).read_text(encoding="utf-8").splitlines()[0].strip()
         except IndexError:
-            raise BrokerError(f"broker.password_file {settings.password_file} is empty. Put the password in it.") from None
+            raise BrokerError(
+                f"broker.password_file {settings.password_file} is empty. Put the password in it."
+            ) from None
         except (OSError, UnicodeDecodeError) as error:
             raise BrokerError(f"broker.password_file {settings.password_file} cannot be read: {error}.") from None
-    return Access(
-        settings.host, settings.port, client_id, settings.username, password, settings.tls, settings.ca_file
-    )
+    return Access(settings.host, settings.port, client_id, settings.username, password, settings.tls, settings.ca_file)

@@ -1,7 +1,7 @@
 """An MQTT client of the hub, and what may stand in its way, in words."""
 
 import ssl
-from typing import Final
+from typing import Final, TypeVar
 
 import paho.mqtt.client as paho
 from paho.mqtt.enums import CallbackAPIVersion
@@ -13,7 +13,10 @@ from hub.mqtt.access import Access
 ANSWER_LIMIT_S: Final = 5.0
 
 
-def new_client(access: Access, *, clean: bool, manual_ack: bool = False) -> paho.Client:
+Client = TypeVar("Client", bound=paho.Client)
+
+
+def new_client(kind: type[Client], access: Access, *, clean: bool, manual_ack: bool = False) -> Client:
     """A client of the protocol's version 3.1.1, with login and TLS set and no connection yet.
 
     Version 3.1.1 because it is half the work of version 5 in this library and offers all that the hub needs; nodes may
@@ -24,7 +27,7 @@ def new_client(access: Access, *, clean: bool, manual_ack: bool = False) -> paho
     BrokerError
         The file of trusted authorities cannot be read.
     """
-    client = paho.Client(
+    client = kind(
         CallbackAPIVersion.VERSION2,
         client_id=access.client_id,
         clean_session=clean,
@@ -47,8 +50,8 @@ def unreachable(access: Access, error: OSError) -> str:
     """One sentence about a broker that cannot be connected to."""
     if isinstance(error, ssl.SSLCertVerificationError):
         return (
-            f"The certificate of the broker at {access.place} is not trusted: {error.verify_message}. Set broker.ca_file "
-            "to the authority that signed it."
+            f"The certificate of the broker at {access.place} is not trusted: {error.verify_message}. "
+            "Set broker.ca_file to the authority that signed it."
         )
     if isinstance(error, ssl.SSLError):
         return f"The broker at {access.place} does not speak TLS there. Check broker.port and broker.tls."

@@ -99,7 +99,7 @@ def access_for_selfcheck(data: Path) -> Access:
         found = json.loads(path.read_text(encoding="utf-8"))
         return Access(found["host"], found["port"], CHECK_USER, found["username"], found["secret"])
     except FileNotFoundError:
-        raise BrokerError(f"No broker was started for the data folder {data} yet. Start the hub: packfold run.") from None
+        raise BrokerError(f"No broker was started for the data folder {data} yet. Start it: packfold run.") from None
     except OSError as error:
         raise BrokerError(f"{path} cannot be read: {error.strerror}. Run this as the user the hub runs as.") from None
     except (ValueError, KeyError, TypeError):

@@ -32,6 +32,8 @@ LONGEST_WAIT_S: Final = 30.0
 # A child that ran this long was sound; the next failure begins with the short wait again.
 SOUND_S: Final = 60.0
 STORES_KEPT: Final = 3
+# How long it is told that the broker lost what it had stored.
+NOTE_S: Final = 24 * 3600.0
 
 
 def find_program() -> Path | None:
@@ -65,7 +67,9 @@ class Mosquitto:
         self._stopping = threading.Event()
         self._failure: BrokerError | None = None
         self._trouble = ""
+        self._credentials_trouble = ""
         self._note = ""
+        self._note_until = 0.0
         self.access = Access(_near(settings.listen), settings.port, HUB_USER, HUB_USER, logins.secret)
 
     @property
@@ -101,7 +105,8 @@ class Mosquitto:
 
     def poll(self) -> str:
         """What is wrong with it now; empty when nothing is."""
-        return self._trouble
+        note = self._note if time.monotonic() < self._note_until else ""
+        return self._trouble or self._credentials_trouble or note
 
     def stop(self) -> None:
         """End it; what it still holds it saves."""
@@ -119,7 +124,7 @@ class Mosquitto:
                 self._failure = error
                 return
             except OSError as error:
-                self._failure = BrokerError(f"Mosquitto cannot be started: {error}. Check the data folder's permissions.")
+                self._failure = BrokerError(f"Mosquitto cannot be started: {error}. See to the data folder's rights.")
                 return
             finally:
                 self._settled.set()
@@ -203,8 +208,9 @@ class Mosquitto:
             if self._logins.changed():
                 config.write_passwords(self._folder, self._logins.read())
                 child.send_signal(signal.SIGHUP)
+            self._credentials_trouble = ""
         except (StoreError, OSError) as error:
-            self._trouble = f"A change of credentials cannot be passed on to the broker yet: {error}"
+            self._credentials_trouble = f"A change of credentials cannot be passed on to the broker yet: {error}"
 
     def _end(self) -> None:
         child = self._child
@@ -238,9 +244,10 @@ class Mosquitto:
         store.replace(kept)
         for old in sorted(self._folder.glob(f"{store.name}.unreadable-*"))[:-STORES_KEPT]:
             old.unlink()
+        self._note_until = time.monotonic() + NOTE_S
         self._note = (
-            f"It could not read what it had stored, which is kept as {kept.name}; messages it held are asked for again "
-            "from the nodes by their missing receipts."
+            f"The broker could not read what it had stored and began anew; the old file is kept as {kept.name}. What "
+            "it held comes again from nodes that keep their readings until the receipt."
         )
 
     def _explain(self, said: str) -> str:
@@ -270,7 +277,7 @@ def check_port(listen: str, port: int, give_up: threading.Event, patience_s: flo
         try:
             return _bind_once(listen, port)
         except PermissionError:
-            raise BrokerError(f"Port {port} needs more rights than the hub has. Choose a broker.port above 1023.") from None
+            raise BrokerError(f"The hub may not listen on port {port}. Choose a broker.port above 1023.") from None
         except OSError as error:
             if isinstance(error, socket.gaierror) or error.errno in _NOT_OURS:
                 raise BrokerError(_foreign(listen)) from None
@@ -292,15 +299,16 @@ def _bind_once(listen: str, port: int) -> int:
 
 def _taken(place: str) -> str:
     return (
-        f"{place[0].upper()}{place[1:]} is taken by another program, perhaps a broker that the system starts by itself "
-        "(“systemctl status mosquitto”). Stop that one, choose another broker.port, or use it with broker.embedded = false."
+        f"{place[0].upper()}{place[1:]} is taken by another program, perhaps a broker that the system starts by "
+        "itself (“systemctl status mosquitto”). Stop that one, choose another broker.port, or use it with "
+        "broker.embedded = false."
     )
 
 
 def _foreign(listen: str) -> str:
     return (
-        f"broker.listen is {listen}, which is no address of this machine. Set it to 127.0.0.1 for this machine alone, to "
-        "0.0.0.0 for every network, or to one of its addresses."
+        f"broker.listen is {listen}, which is no address of this machine. Set it to 127.0.0.1 for this machine "
+        "alone, to 0.0.0.0 for every network, or to one of its addresses."
     )
 
 
@@ -315,5 +323,3 @@ def _takes_connections(host: str, port: int) -> bool:
             return True
     except OSError:
         return False
-
-

@@ -48,7 +48,7 @@ def configuration(settings: Broker, port: int) -> str:
     Numbers are written out even where they are the default: mosquitto's limits drop messages without a word, 0 has
     meant "none" and "drop everything" in different versions, and the default persistence interval is half an hour.
     """
-    lines = (
+    lines = [
         "# Written by the hub at each of its starts; changes made here do not last.",
         f"listener {port} {settings.listen}",
         "allow_anonymous false",
@@ -74,9 +74,9 @@ def configuration(settings: Broker, port: int) -> str:
         "log_type warning",
         "log_type notice",
         "log_type information",
-    )
+    ]
     if os.geteuid() == 0 and owner() is None:
-        lines = (*lines, "user root")
+        lines.append("user root")
     return "\n".join(lines) + "\n"
 
 

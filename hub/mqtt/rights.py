@@ -1,7 +1,7 @@
 """Who may do what at a broker that the hub starts.
 
-A node publishes its telemetry and its presence and reads its receipts, all below its own name, and nothing else. The hub
-reads and writes everything below the root. Both kinds of broker follow this one table.
+A node publishes its telemetry and its presence and reads its receipts, all below its own name, and nothing else. The
+hub reads and writes everything below the root. Both kinds of broker follow this one table.
 """
 
 from typing import Final

@@ -77,7 +77,7 @@ class Gate:
                 return False
 
 
-class LoginPlugin(BaseAuthPlugin):
+class LoginPlugin(BaseAuthPlugin):  # type: ignore[misc]  # the library has no types we read
     """Lets in whom the gate admits."""
 
     @dataclass
@@ -92,7 +92,7 @@ class LoginPlugin(BaseAuthPlugin):
         return gate.admits(session.username, session.password, session.client_id)
 
 
-class RightsPlugin(BaseTopicPlugin):
+class RightsPlugin(BaseTopicPlugin):  # type: ignore[misc]  # see above
     """Lets through what the gate allows."""
 
     @dataclass

@@ -1,18 +1,26 @@
 """What could not be used: kept with its reason and, where a whole message is concerned, its bytes."""
 
 import json
-from collections.abc import Sequence
+from collections import Counter
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass
+from math import isfinite
+from typing import Any
 
-from sqlalchemy import Connection, func, select
+from sqlalchemy import Connection, delete, func, select
 
 from hub.store import tables as t
+from hub.store.layout import fixed_point
+from hub.store.opened import in_parts
 from hub.telemetry.message import Remark
 
-# A flood of nonsense must not fill the card: of each node and reason this many are kept whole, the rest are counted by
-# their rows without the bytes.
+# A flood of nonsense must not fill the card: of each node, source and reason the first so many are kept with their
+# bytes and the first so many as rows; beyond that they are counted. The lines of a log are few enough to keep them all.
 PAYLOADS_KEPT = 1000
+ROWS_KEPT = 50_000
 PAYLOAD_BYTES_KEPT = 65_536
+LOG = "log"
+CONTRADICTION = "contradiction"
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,42 +50,129 @@ class Origin:
 
 
 def keep(connection: Connection, origin: Origin, remarks: Sequence[Remark], payload: bytes | None = None) -> None:
-    """Set remarks aside; ``payload`` is kept with the first of them."""
-    if not remarks:
+    """Set remarks aside; ``payload`` is kept with the first of them. What came before, said again, is kept once."""
+    rows = _unheard(connection, [_row(origin, remark) for remark in remarks])
+    if not rows:
         return
-    kept = payload[:PAYLOAD_BYTES_KEPT] if payload is not None else None
-    if kept is not None and _payloads(connection, origin, remarks[0].reason) >= PAYLOADS_KEPT:
-        kept = None
-    connection.execute(
-        t.set_aside.insert(),
-        [
-            {
-                "node_id": origin.node_id,
-                "node_name": origin.node_name,
-                "received_ms": origin.received_ms,
-                "source": origin.source,
-                "origin": origin.name[:500],
-                "line": remark.line,
-                "import_id": origin.import_id,
-                "reason": remark.reason,
-                "detail": remark.detail,
-                "time_ms": remark.time_ms,
-                "quantity": remark.quantity,
-                "value": remark.value,
-                "values": None if remark.values is None else json.dumps(remark.values),
-                "payload": kept if number == 0 else None,
-            }
-            for number, remark in enumerate(remarks)
-        ],
-    )
+    before = _count(connection, origin, Counter(row["reason"] for row in rows))
+    if payload is not None and before[rows[0]["reason"]] < PAYLOADS_KEPT:
+        rows[0]["payload"] = payload[:PAYLOAD_BYTES_KEPT]
+    kept = [row for row in rows if origin.source == LOG or before[row["reason"]] < ROWS_KEPT]
+    if kept:
+        connection.execute(t.set_aside.insert(), kept)
 
 
-def _payloads(connection: Connection, origin: Origin, reason: str) -> int:
+def _row(origin: Origin, remark: Remark) -> dict[str, Any]:
+    return {
+        "node_id": origin.node_id,
+        "node_name": None if origin.node_name is None else storable(origin.node_name),
+        "received_ms": origin.received_ms,
+        "source": origin.source,
+        "origin": storable(origin.name)[:500],
+        "line": remark.line,
+        "import_id": origin.import_id,
+        "reason": remark.reason,
+        "detail": storable(remark.detail),
+        "time_ms": remark.time_ms,
+        "quantity": None if remark.quantity is None else storable(remark.quantity),
+        "value": remark.value if remark.value is not None and isfinite(remark.value) else None,
+        "values": None if remark.values is None else json.dumps(remark.values),
+        "payload": None,
+    }
+
+
+def storable(text: str) -> str:
+    """Text without the halves of surrogate pairs that a message can smuggle in and no database takes."""
+    return text.encode("utf-8", "replace").decode()
+
+
+_SAME = ("reason", "time_ms", "quantity", "value", "values", "line", "import_id")
+
+
+def _unheard(connection: Connection, rows: Sequence[dict[str, Any]]) -> list[dict[str, Any]]:
+    """Rows that were not set aside before: a message that is delivered twice is set aside once."""
     a = t.set_aside.c
-    owner = a.node_id == origin.node_id if origin.node_id is not None else a.node_id.is_(None)
-    return connection.execute(
-        select(func.count()).where(owner, a.reason == reason, a.payload.is_not(None))
-    ).scalar_one()
+    heard: set[tuple[object, ...]] = set()
+    timed = {row["time_ms"] for row in rows if row["node_id"] is not None and row["time_ms"] is not None}
+    for part in in_parts(timed):
+        query = select(*(a[name] for name in _SAME)).where(
+            a.node_id == rows[0]["node_id"], a.reason.in_({row["reason"] for row in rows}), a.time_ms.in_(part)
+        )
+        heard.update(tuple(found) for found in connection.execute(query))
+    fresh: list[dict[str, Any]] = []
+    for row in rows:
+        key = tuple(row[name] for name in _SAME)
+        if row["time_ms"] is None or key not in heard:
+            fresh.append(row)
+            heard.add(key)
+    return fresh
+
+
+def _count(connection: Connection, origin: Origin, added: Mapping[str, int]) -> dict[str, int]:
+    """Count what is set aside; how many of each reason there were before."""
+    owner = origin.node_id or 0
+    before: dict[str, int] = {}
+    for reason, number in added.items():
+        total = connection.exec_driver_sql(
+            "INSERT INTO aside_total (node_id, source, reason, count) VALUES (?, ?, ?, ?) "
+            "ON CONFLICT (node_id, source, reason) DO UPDATE SET count = count + excluded.count RETURNING count",
+            (owner, origin.source, reason, number),
+        ).scalar_one()
+        before[reason] = total - number
+    return before
+
+
+def forget_import(connection: Connection, import_id: int) -> None:
+    """Forget what was set aside of an import that is taken back."""
+    _forget(connection, t.set_aside.c.import_id == import_id)
+
+
+def _forget(connection: Connection, which: Any) -> None:  # noqa: ANN401 - a condition
+    a, total = t.set_aside.c, t.aside_total.c
+    gone = select(func.coalesce(a.node_id, 0), a.source, a.reason, func.count()).where(which)
+    for node_id, source, reason, number in connection.execute(gone.group_by(a.node_id, a.source, a.reason)).fetchall():
+        connection.execute(
+            t.aside_total.update()
+            .where(total.node_id == node_id, total.source == source, total.reason == reason)
+            .values(count=total.count - number)
+        )
+    connection.execute(delete(t.set_aside).where(which))
+
+
+@dataclass(frozen=True, slots=True)
+class Contradiction:
+    """A value that was kept out because another one stood in its place."""
+
+    id: int
+    time_ms: int
+    quantity: str
+    value: float
+    received_ms: int
+    import_id: int | None
+
+
+def take_contradictions(
+    connection: Connection, node_id: int, places: Collection[tuple[int, str]]
+) -> list[Contradiction]:
+    """Take out, in the order in which they came, the values for places (instant, quantity) that are free now.
+
+    Of several for one place the first is taken, with those that say the same; the others stay set aside.
+    """
+    a = t.set_aside.c
+    columns = (a.id, a.time_ms, a.quantity, a.value, a.received_ms, a.import_id)
+    chosen: dict[tuple[int, str], int] = {}
+    taken: list[Contradiction] = []
+    for part in in_parts({time_ms for time_ms, _ in places}):
+        query = select(*columns).where(
+            a.node_id == node_id, a.reason == CONTRADICTION, a.time_ms.in_(part), a.value.is_not(None)
+        )
+        for row in connection.execute(query.order_by(a.id)).mappings():
+            place, number = (row["time_ms"], row["quantity"]), fixed_point(row["quantity"], row["value"])
+            if place in places and chosen.setdefault(place, number) == number:
+                taken.append(Contradiction(**row))
+    for ids in in_parts({c.id for c in taken}):
+        _forget(connection, a.id.in_(ids))
+    return taken
 
 
 @dataclass(frozen=True, slots=True)
@@ -118,9 +213,12 @@ def newest(connection: Connection, node_id: int | None = None, limit: int = 100)
 
 
 def counts(connection: Connection, node_id: int) -> dict[str, int]:
-    """How many things of a node were set aside, by reason."""
-    a = t.set_aside.c
+    """How many things of a node were set aside, by reason; also those that were only counted."""
+    total = t.aside_total.c
     rows = connection.execute(
-        select(a.reason, func.count()).where(a.node_id == node_id).group_by(a.reason).order_by(a.reason)
+        select(total.reason, func.sum(total.count))
+        .where(total.node_id == node_id, total.count > 0)
+        .group_by(total.reason)
+        .order_by(total.reason)
     )
     return {row[0]: row[1] for row in rows}

@@ -1,13 +1,14 @@
 """One UTC day of one node's readings as compressed columns.
 
-A day that nobody writes to any more takes a tenth of the space and a twentieth of the time to read in this form. The
-form is lossless: integers in, the same integers out. Each column is compressed by itself, so that reading one quantity
+A day that nobody writes to any more takes a ninth of the space and less than a tenth of the time to read in this form.
+The form is lossless: integers in, the same integers out. Each column is compressed by itself, so that reading one quantity
 does not unpack the others.
 
-Layout: the bytes ``PB1``, the length of the directory (4 bytes, little endian), the directory as MessagePack
-``[count, [[name, steps, width, present_bytes, stored_bytes], ...]]``, then the columns. A column is the map of present
-values (one bit a reading, empty when all are there) and the values, as differences of the order ``steps``, folded to
-unsigned, in ``width`` bytes each with equal byte positions beside each other; map and values are compressed by zlib.
+Layout: the bytes ``PB1``, the CRC-32 of all that follows and the length of the directory (4 bytes each, little endian),
+the directory as MessagePack ``[count, [[name, steps, width, present_bytes, stored_bytes], ...]]``, then the columns. A
+column is the map of present values (one bit a reading, empty when all are there) and the values, as differences of the
+order ``steps``, folded to unsigned, in ``width`` bytes each with equal byte positions beside each other; map and values
+are compressed by zlib.
 """
 
 import zlib
@@ -18,10 +19,13 @@ import msgspec
 import numpy as np
 import numpy.typing as npt
 
+from hub.errors import StoreError
+
 Ints = npt.NDArray[np.int64]
 Present = npt.NDArray[np.bool_]
 
 MAGIC = b"PB1"
+HEAD_BYTES = 11
 LEVEL = 6
 
 
@@ -60,15 +64,26 @@ def pack(columns: Columns) -> bytes:
         directory.append((name, steps, width, len(mapped), len(stored)))
         body += [mapped, stored]
     head = msgspec.msgpack.encode((columns.count, directory))
-    return b"".join([MAGIC, len(head).to_bytes(4, "little"), head, *body])
+    rest = b"".join([len(head).to_bytes(4, "little"), head, *body])
+    return MAGIC + zlib.crc32(rest).to_bytes(4, "little") + rest
 
 
 def unpack(data: bytes, names: Collection[str] | None = None) -> Columns:
-    """Columns from bytes; only those in ``names`` where given."""
-    if data[:3] != MAGIC:
-        raise ValueError("not a block of readings")
-    start = 7 + int.from_bytes(data[3:7], "little")
-    count, directory = msgspec.msgpack.decode(data[7:start], type=tuple[int, list[tuple[str, int, int, int, int]]])
+    """Columns from bytes; only those in ``names`` where given.
+
+    Raises
+    ------
+    StoreError
+        The bytes are not a block, or were damaged.
+    """
+    if data[:3] != MAGIC or len(data) < HEAD_BYTES or zlib.crc32(data[7:]) != int.from_bytes(data[3:7], "little"):
+        raise StoreError(
+            "A sealed day of readings is damaged. Stop the hub, keep the database file, and restore the last backup."
+        )
+    start = HEAD_BYTES + int.from_bytes(data[7:HEAD_BYTES], "little")
+    count, directory = msgspec.msgpack.decode(
+        data[HEAD_BYTES:start], type=tuple[int, list[tuple[str, int, int, int, int]]]
+    )
     values: dict[str, Ints] = {}
     present: dict[str, Present] = {}
     for name, steps, width, mapped_bytes, stored_bytes in directory:

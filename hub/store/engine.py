@@ -7,24 +7,27 @@ processes doing that at once is the one known way to damage such a file (the "WA
 fixed in SQLite 3.51.3).
 """
 
-import fcntl
-import os
 import sqlite3
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
-from sqlalchemy import Connection, Engine, create_engine, event, make_url
-from sqlalchemy.exc import DatabaseError, OperationalError
+from sqlalchemy import URL, Connection, Engine, create_engine, event, make_url
+from sqlalchemy.exc import ArgumentError, DatabaseError
+from sqlalchemy.exc import TimeoutError as PoolTimeoutError
 from sqlalchemy.pool import NullPool
 
-from hub.errors import AlreadyRunningError, StoreError
+from hub.errors import StoreError
+from hub.store.folder import FolderLock, make_folder, refuse_network_share
+
+__all__ = ["Database", "FolderLock", "in_plain_words", "sqlite_release"]
 
 WRITER_TIMEOUT_S = 30.0
 READER_TIMEOUT_S = 10.0
 WAL_LIMIT_BYTES = 64 * 1024 * 1024
 DATABASE_NAME = "packfold.db"
+SQLITE_SOUND = (3, 51, 3)
 
 
 class Database:
@@ -42,34 +45,23 @@ class Database:
 
     def __init__(self, data: Path, url: str = "", *, checkpoints: bool = False) -> None:
         self.data = data
-        try:
-            data.mkdir(parents=True, exist_ok=True)
-        except OSError as error:
-            raise StoreError(
-                f"The data folder {data} cannot be made: {error.strerror}. Choose another with --data."
-            ) from None
-        self.url = url or f"sqlite:///{data / DATABASE_NAME}"
-        parsed = make_url(self.url)
-        self.sqlite = parsed.get_backend_name() == "sqlite"
-        if not self.sqlite:
-            raise StoreError(
-                f"database.url names {parsed.get_backend_name()}, which this version does not open. "
-                "Leave it empty for SQLite in the data folder."
-            )
-        self.file = Path(parsed.database or "")
-        self._writer = _engine(self.url, writing=True, checkpoints=checkpoints)
-        self._reader = _engine(self.url, writing=False, checkpoints=False)
+        make_folder(data)
+        found = _parsed(url) if url else URL.create("sqlite", database=str(data / DATABASE_NAME))
+        self.file = Path(found.database or "")
+        refuse_network_share(self.file.absolute().parent)
+        self._writer = _engine(found, writing=True, checkpoints=checkpoints)
+        self._reader = _engine(found, writing=False, checkpoints=False)
 
     @contextmanager
     def write(self) -> Iterator[Connection]:
         """One writing transaction: all of it is durable when the block ends, or none of it happened."""
-        with _in_plain_words(self.file), self._writer.begin() as connection:
+        with in_plain_words(self.file), self._writer.begin() as connection:
             yield connection
 
     @contextmanager
     def read(self) -> Iterator[Connection]:
         """A snapshot for reading; the connection refuses to write."""
-        with _in_plain_words(self.file), self._reader.begin() as connection:
+        with in_plain_words(self.file), self._reader.begin() as connection:
             yield connection
 
     @staticmethod
@@ -89,7 +81,27 @@ class Database:
         self._writer.dispose()
 
 
-def _engine(url: str, *, writing: bool, checkpoints: bool) -> Engine:
+def _parsed(url: str) -> URL:
+    """The URL of a SQLite file.
+
+    Raises
+    ------
+    StoreError
+        It is none.
+    """
+    advice = "Leave it empty for a file in the data folder, or write it as sqlite:////path/to/file.db."
+    try:
+        found = make_url(url)
+    except ArgumentError:
+        raise StoreError(f"database.url “{url}” is not the address of a database. {advice}") from None
+    if found.drivername not in {"sqlite", "sqlite+pysqlite"}:
+        raise StoreError(f"database.url names {found.drivername}, which this version does not open. {advice}")
+    if not found.database or ":memory:" in found.database:
+        raise StoreError(f"database.url names no file, and what is received must survive a restart. {advice}")
+    return found
+
+
+def _engine(url: URL, *, writing: bool, checkpoints: bool) -> Engine:
     timeout = WRITER_TIMEOUT_S if writing else READER_TIMEOUT_S
     arguments: dict[str, Any] = {"timeout": timeout, "check_same_thread": False}
     if writing:
@@ -125,16 +137,16 @@ def _engine(url: str, *, writing: bool, checkpoints: bool) -> Engine:
 
 
 @contextmanager
-def _in_plain_words(file: Path) -> Iterator[None]:
+def in_plain_words(file: Path) -> Iterator[None]:
     """Driver errors as sentences that say what to do."""
     try:
         yield
-    except (OperationalError, DatabaseError) as error:
-        if not isinstance(error.orig, sqlite3.DatabaseError):
-            raise
-        text = str(error.orig)
-        for mark, advice in _ADVICE:
-            if mark in text:
+    except PoolTimeoutError as error:
+        raise StoreError(_ADVICE[0][1].format(file=file)) from error
+    except (DatabaseError, sqlite3.DatabaseError) as error:
+        fault = error.orig if isinstance(error, DatabaseError) else error
+        for mark, advice in _ADVICE if isinstance(fault, sqlite3.DatabaseError) else ():
+            if mark in str(fault):
                 raise StoreError(advice.format(file=file)) from error
         raise
 
@@ -146,53 +158,12 @@ _ADVICE = (
     ("unable to open", "The database {file} cannot be opened. Check that its folder exists and is writable."),
     ("malformed", "The database {file} is damaged. Stop the hub, keep the file, and restore the last backup."),
     ("not a database", "The file {file} is not a Packfold database. Move it away or choose another --data folder."),
+    ("no such table", "The database {file} has another schema. Start the hub once to bring it up to date."),
+    ("no such column", "The database {file} has another schema. Start the hub once to bring it up to date."),
     ("disk I/O", "The disk with {file} reports an error. Check the card or disk, then restore the last backup."),
 )
 
 
-class FolderLock:
-    """The mark that a part of a hub works on a data folder; the system drops it when the process ends, however.
-
-    The part that collects is the one that moves the write-ahead log.
-    """
-
-    def __init__(self, data: Path, part: str = "collect") -> None:
-        self._path = data / f"{part}.lock"
-        self._handle: int | None = None
-
-    def take(self) -> None:
-        """Take the lock, or say who has it.
-
-        Raises
-        ------
-        AlreadyRunningError
-            Another process holds it.
-        """
-        self._path.parent.mkdir(parents=True, exist_ok=True)
-        handle = os.open(self._path, os.O_RDWR | os.O_CREAT, 0o600)
-        try:
-            fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
-        except OSError:
-            owner = os.read(handle, 32).decode(errors="replace").strip()
-            os.close(handle)
-            raise AlreadyRunningError(
-                f"Another hub{f' (process {owner})' if owner else ''} already works on the data folder "
-                f"{self._path.parent}. Stop it first, or give this one its own folder with --data."
-            ) from None
-        os.ftruncate(handle, 0)
-        os.write(handle, f"{os.getpid()}\n".encode())
-        self._handle = handle
-
-    def try_take(self) -> bool:
-        """Take the lock if nobody has it."""
-        try:
-            self.take()
-        except AlreadyRunningError:
-            return False
-        return True
-
-    def release(self) -> None:
-        """Give the lock back."""
-        if self._handle is not None:
-            os.close(self._handle)
-            self._handle = None
+def sqlite_release() -> tuple[str, bool]:
+    """The version of SQLite in use, and whether it is free of the fault described above."""
+    return sqlite3.sqlite_version, sqlite3.sqlite_version_info >= SQLITE_SOUND

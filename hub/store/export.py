@@ -69,7 +69,7 @@ def _write_csv(columns: tuple[str, ...], found: Iterator[Row], stream: IO[bytes]
 
 
 def _cell(value: object) -> object:
-    if isinstance(value, str) and value[:1] in {"=", "+", "-", "@", "\t"}:
+    if isinstance(value, str) and value[:1] in {"=", "+", "-", "@", "\t", "\r"}:
         return f"'{value}"
     return "" if value is None else value
 

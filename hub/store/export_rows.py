@@ -6,6 +6,7 @@ the cursor behind which a reader may go on.
 
 import datetime as dt
 import json
+import re
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from typing import Any
@@ -42,12 +43,16 @@ class Selection:
 
 @dataclass(frozen=True, slots=True)
 class Table:
-    """One export table: its columns are a promise; new ones are added at the end."""
+    """One export table: its columns are a promise; new ones are added at the end.
+
+    A row's key is the name of its node or pack, and its instant or its date.
+    """
 
     name: str
     columns: tuple[str, ...]
     description: str
     fetch: Callable[["_Context", Key | None], Iterator[tuple[Key, Row]]]
+    keyed_by_date: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,10 +84,15 @@ class _Context:
         return instant(self.selection.start), instant(self.selection.end, after=True)
 
     def dates(self) -> tuple[str | None, str | None]:
-        """First and last local date."""
-        for text in (self.selection.start, self.selection.end):
-            instant(text)
-        return tuple(text[:10] if text else None for text in (self.selection.start, self.selection.end))  # type: ignore[return-value]
+        """First and last local date; of an instant the date that it names itself."""
+        return _date(self.selection.start), _date(self.selection.end)
+
+
+# Calendars begin and end somewhere; no reading is as old or as new as that.
+LONG_AGO, FAR_AHEAD = dt.date(1970, 1, 2), dt.date(9000, 1, 1)
+
+_INSTANT = re.compile(r"[0-9]{15}")
+_DATE = re.compile(r"[0-9]{4}-[0-9]{2}-[0-9]{2}")
 
 
 def instant(text: str | None, *, after: bool = False) -> int | None:
@@ -95,18 +105,35 @@ def instant(text: str | None, *, after: bool = False) -> int | None:
     """
     if text is None:
         return None
+    day, moment = _parsed(text)
+    if moment is None:
+        moment = dt.datetime.combine(day, dt.time(), dt.UTC)
+        if after:
+            moment += dt.timedelta(days=1)
+    return round(moment.timestamp() * 1000)
+
+
+def _date(text: str | None) -> str | None:
+    return None if text is None else _parsed(text)[0].isoformat()
+
+
+def _parsed(text: str) -> tuple[dt.date, dt.datetime | None]:
+    """A date and, where there is one, an instant."""
+    moment = None
     try:
         if len(text) == len("2026-03-01"):
-            day = dt.datetime.combine(dt.date.fromisoformat(text), dt.time(), dt.UTC)
-            return round((day + dt.timedelta(days=after)).timestamp() * 1000)
-        moment = dt.datetime.fromisoformat(text)
-    except (ValueError, OverflowError):
-        moment = None
-    if moment is None or moment.tzinfo is None:
+            day = dt.date.fromisoformat(text)
+            if LONG_AGO <= day <= FAR_AHEAD:
+                return day, None
+        else:
+            moment = dt.datetime.fromisoformat(text)
+    except ValueError:
+        pass
+    if moment is None or moment.tzinfo is None or not LONG_AGO <= moment.date() <= FAR_AHEAD:
         raise UsageError(
             f"“{text}” is not a date like 2026-03-01 nor an instant with its zone like 2026-03-01T09:00:00Z."
         )
-    return round(moment.timestamp() * 1000)
+    return moment.date(), moment
 
 
 def rows(
@@ -128,7 +155,10 @@ def rows(
         inventory.pack_ids(connection),
     )
     _ = context.nodes, context.packs, context.instants()
-    behind = _key_of(after) if after else None
+    return _behind(spec, context, _key_of(after, spec) if after else None)
+
+
+def _behind(spec: Table, context: _Context, behind: Key | None) -> Iterator[tuple[str, Row]]:
     for key, row in spec.fetch(context, behind):
         if behind is None or key > behind:
             yield json.dumps(key, ensure_ascii=False, separators=(",", ":")), row
@@ -147,12 +177,13 @@ def table_named(name: str) -> Table:
     return TABLES[name]
 
 
-def _key_of(cursor: str) -> Key:
+def _key_of(cursor: str, spec: Table) -> Key:
     try:
         parts = json.loads(cursor)
-    except ValueError:
+    except (ValueError, RecursionError):
         parts = None
-    if not isinstance(parts, list) or not parts or not all(isinstance(p, str) for p in parts):
+    whole = isinstance(parts, list) and len(parts) == 2 and all(isinstance(p, str) for p in parts)  # noqa: PLR2004 - a pair
+    if not whole or not (_DATE if spec.keyed_by_date else _INSTANT).fullmatch(parts[1]):
         raise UsageError("The cursor cannot be read. Begin again without one.")
     return tuple(parts)
 
@@ -188,20 +219,19 @@ def _readings(context: _Context, after: Key | None) -> Iterator[tuple[Key, Row]]
         last = min(known[1] + 1, end if end is not None else known[1] + 1)
         node = context.inventory.node(name)
         calibrations = [c for c in context.inventory.calibrations if c.node == name]
-        day = first // readings.DAY_MS * readings.DAY_MS
-        while day < last:
+        # Whole days, whatever was asked for: what screening finds must not depend on where a reader began.
+        for day in range(first // readings.DAY_MS * readings.DAY_MS, last, readings.DAY_MS):
             found = measured.read(
                 context.connection,
                 context.node_ids[name],
-                max(day, first),
-                min(day + readings.DAY_MS, last),
+                day,
+                day + readings.DAY_MS,
                 calibrations,
                 node.current_full_scale_a,
             )
             for time_ms, row in _reading_rows(name, found):
-                if spans is None or any(a <= time_ms < b for a, b in spans):
+                if first <= time_ms < last and (spans is None or any(a <= time_ms < b for a, b in spans)):
                     yield (name, _sortable(time_ms)), row
-            day += readings.DAY_MS
 
 
 def _fitted_spans(context: _Context, node: str) -> list[tuple[float, float]] | None:
@@ -296,6 +326,7 @@ _DAY_COLUMNS = (
     *("load_wh", "clear_sky_wh", "harvest_ratio", "pack_temperature_max_c", "cell_voltage_min_v"),
     *("cell_voltage_max_v", "full_at"),
     *("observed_s", "charge_uncertainty_ah", "discharge_uncertainty_ah", "start", "end"),
+    *("bridged_s", "offset_removed_a"),
 )
 _CHARGE_COLUMNS = (
     *("node", "pack", "start", "end", "charge_ah", "charge_wh", "mean_rate_it", "peak_temperature_c", "ended_by"),
@@ -320,6 +351,7 @@ TABLES: dict[str, Table] = {
             ("pack", "date", "discharge_ah", "equivalent_full_cycles"),
             "Discharged charge of a pack by local date, and its equivalent full cycles so far.",
             _throughput,
+            keyed_by_date=True,
         ),
     )
 }

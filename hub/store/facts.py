@@ -26,6 +26,8 @@ def revision(connection: Connection) -> int:
 
 def next_revision(connection: Connection) -> int:
     """A revision larger than every one before, for what changes in this transaction."""
-    number = revision(connection) + 1
-    put(connection, "revision", str(number))
-    return number
+    found = connection.exec_driver_sql(
+        "INSERT INTO fact (name, value) VALUES ('revision', '1') "
+        "ON CONFLICT (name) DO UPDATE SET value = CAST(value AS INTEGER) + 1 RETURNING value"
+    )
+    return int(found.scalar_one())

@@ -4,9 +4,11 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
-from sqlalchemy import Connection, RowMapping, delete, select
+from sqlalchemy import Connection, Select, delete, select
 
 from hub.store import tables as t
+
+Row = dict[str, Any]
 
 _FIGURES = (t.day_figure, t.finding_figure, t.ledger)
 
@@ -103,7 +105,7 @@ def clear(connection: Connection, node_id: int, start_ms: int, end_ms: int) -> N
     )
 
 
-def days(connection: Connection, node_id: int, since: str | None = None, until: str | None = None) -> list[RowMapping]:
+def days(connection: Connection, node_id: int, since: str | None = None, until: str | None = None) -> list[Row]:
     """Day figures of a node in order of time, with the pack's label as ``pack``; dates are inclusive."""
     d = t.day_figure.c
     query = (
@@ -116,12 +118,10 @@ def days(connection: Connection, node_id: int, since: str | None = None, until: 
         query = query.where(d.date >= since)
     if until is not None:
         query = query.where(d.date <= until)
-    return list(connection.execute(query).mappings())
+    return _rows(connection, query)
 
 
-def charges(
-    connection: Connection, node_id: int, start_ms: int | None = None, end_ms: int | None = None
-) -> list[RowMapping]:
+def charges(connection: Connection, node_id: int, start_ms: int | None = None, end_ms: int | None = None) -> list[Row]:
     """Charge sessions of a node that begin in a stretch of time, as the latest window saw each."""
     c = t.charge_figure.c
     query = (
@@ -134,13 +134,11 @@ def charges(
         query = query.where(c.start_ms >= start_ms)
     if end_ms is not None:
         query = query.where(c.start_ms < end_ms)
-    latest = {row["start_ms"]: row for row in connection.execute(query).mappings()}
+    latest = {row["start_ms"]: row for row in _rows(connection, query)}
     return list(latest.values())
 
 
-def findings(
-    connection: Connection, node_id: int, start_ms: int | None = None, end_ms: int | None = None
-) -> list[RowMapping]:
+def findings(connection: Connection, node_id: int, start_ms: int | None = None, end_ms: int | None = None) -> list[Row]:
     """Values that screening kept out of the figures, by window, quantity and reason."""
     f = t.finding_figure.c
     query = select(t.finding_figure).where(f.node_id == node_id).order_by(f.start_ms, f.quantity, f.reason)
@@ -148,10 +146,10 @@ def findings(
         query = query.where(f.start_ms >= start_ms)
     if end_ms is not None:
         query = query.where(f.start_ms < end_ms)
-    return list(connection.execute(query).mappings())
+    return _rows(connection, query)
 
 
-def pack_days(connection: Connection, pack_id: int) -> list[RowMapping]:
+def pack_days(connection: Connection, pack_id: int) -> list[Row]:
     """Discharged charge of a pack by local date, over all nodes it was in."""
     d = t.day_figure.c
     query = (
@@ -159,4 +157,8 @@ def pack_days(connection: Connection, pack_id: int) -> list[RowMapping]:
         .where(d.pack_id == pack_id, d.discharge_ah.is_not(None))
         .order_by(d.date, d.start_ms)
     )
-    return list(connection.execute(query).mappings())
+    return _rows(connection, query)
+
+
+def _rows(connection: Connection, query: Select[Any]) -> list[Row]:
+    return [row._asdict() for row in connection.execute(query)]

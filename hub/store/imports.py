@@ -3,12 +3,15 @@
 from collections.abc import Iterable
 from dataclasses import dataclass
 
-from sqlalchemy import Connection, delete, insert, select, update
+from sqlalchemy import Connection, insert, select, update
 
 from hub.errors import UsageError
+from hub.store import aside
 from hub.store import tables as t
-from hub.store.append import mark
-from hub.store.layout import DAY_MS, HOUR_MS, Stored, block_rows, write_block
+from hub.store.append import append, mark
+from hub.store.arrivals import Arrival
+from hub.store.layout import DAY_MS, HOUR_MS
+from hub.store.opened import OpenedDay
 
 
 @dataclass(frozen=True, slots=True)
@@ -91,7 +94,10 @@ def listing(connection: Connection, node_id: int | None = None) -> list[Import]:
 
 
 def undo(connection: Connection, import_id: int, now_ms: int) -> int:
-    """Take back what an import brought and nobody else vouched for since; how many readings went.
+    """Take back what an import brought and the node itself has not sent since; how many readings went.
+
+    Values that other imports added stay. What was set aside because a value of this import stood in its place takes
+    that place now.
 
     Raises
     ------
@@ -104,69 +110,65 @@ def undo(connection: Connection, import_id: int, now_ms: int) -> int:
     this = Import(**row)
     if this.undone_ms is not None:
         raise UsageError(f"Import {import_id} was taken back already.")
-    hours: set[int] = set()
     removed = 0
-    if this.first_ms is not None and this.last_ms is not None:
-        removed += _undo_rows(connection, this, hours)
-        removed += _undo_blocks(connection, this, hours)
-    connection.execute(delete(t.import_fill).where(t.import_fill.c.import_id == import_id))
-    connection.execute(delete(t.set_aside).where(t.set_aside.c.import_id == import_id))
+    freed: set[tuple[int, str]] = set()
+    for day, is_sealed in _days(connection, this):
+        removed += _undo_day(connection, this, day, freed, sealed=is_sealed)
+    aside.forget_import(connection, import_id)
     connection.execute(update(t.log_import).where(t.log_import.c.id == import_id).values(undone_ms=now_ms))
-    if hours:
-        mark(connection, {(this.node_id, hour) for hour in hours})
+    if freed:
+        mark(connection, {(this.node_id, time_ms // HOUR_MS) for time_ms, _ in freed})
+        append(connection, _waiting(aside.take_contradictions(connection, this.node_id, freed), this.node_id))
     return removed
 
 
-def _fills(connection: Connection, this: Import) -> dict[int, list[str]]:
-    f = t.import_fill.c
-    found: dict[int, list[str]] = {}
-    for row in connection.execute(select(f.time_ms, f.quantity).where(f.import_id == this.id)):
-        found.setdefault(row.time_ms, []).append(row.quantity)
-    return found
+def _days(connection: Connection, this: Import) -> list[tuple[int, bool]]:
+    """UTC days in which something of an import may lie, and whether each is sealed."""
+    if this.first_ms is None or this.last_ms is None:
+        return []
+    first, last = this.first_ms // DAY_MS, this.last_ms // DAY_MS
+    b, r, f = t.reading_block.c, t.reading.c, t.import_fill.c
+    sealed = set(
+        connection.execute(
+            select(b.utc_day).where(b.node_id == this.node_id, b.utc_day >= first, b.utc_day <= last)
+        ).scalars()
+    )
+    inside = (r.node_id == this.node_id, r.time_ms >= this.first_ms, r.time_ms <= this.last_ms)
+    own = select(r.time_ms // DAY_MS).where(*inside, r.import_id == this.id).distinct()
+    filled = select(f.time_ms // DAY_MS).where(f.import_id == this.id).distinct()
+    unsealed = set(connection.execute(own).scalars()) | set(connection.execute(filled).scalars())
+    return [(day, day in sealed) for day in sorted(sealed | unsealed)]
 
 
-def _undo_rows(connection: Connection, this: Import, hours: set[int]) -> int:
-    r = t.reading.c
-    mine = (r.node_id == this.node_id, r.time_ms >= this.first_ms, r.time_ms <= this.last_ms, r.import_id == this.id)
-    times = connection.execute(select(r.time_ms).where(*mine)).scalars().all()
-    connection.execute(delete(t.reading).where(*mine))
-    hours |= {time_ms // HOUR_MS for time_ms in times}
-    for time_ms, names in _fills(connection, this).items():
-        changed = connection.execute(
-            update(t.reading).where(r.node_id == this.node_id, r.time_ms == time_ms).values(dict.fromkeys(names))
-        )
-        if changed.rowcount:
-            hours.add(time_ms // HOUR_MS)
-    return len(times)
+def _undo_day(connection: Connection, this: Import, day: int, freed: set[tuple[int, str]], *, sealed: bool) -> int:
+    opened = OpenedDay(connection, this.node_id, day, sealed=sealed)
+    opened.open(opened.of_import(this.id))
+    before = list(opened.rows)
+    for time_ms in before:
+        freed |= {(time_ms, name) for name in _withdraw(opened, time_ms, this.id)}
+    opened.save()
+    return len(before) - len(opened.rows)
 
 
-def _undo_blocks(connection: Connection, this: Import, hours: set[int]) -> int:
-    assert this.first_ms is not None
-    assert this.last_ms is not None
-    b = t.reading_block.c
-    days = connection.execute(
-        select(b.utc_day).where(
-            b.node_id == this.node_id, b.utc_day >= this.first_ms // DAY_MS, b.utc_day <= this.last_ms // DAY_MS
-        )
-    ).scalars()
-    fills = _fills(connection, this)
-    removed = 0
-    for day in days.all():
-        rows = block_rows(connection, this.node_id, day)
-        gone = [time_ms for time_ms, row in rows.items() if row["import_id"] == this.id]
-        filled = [time_ms for time_ms in fills if time_ms in rows]
-        if not gone and not filled:
-            continue
-        _empty(rows, fills, filled)
-        for time_ms in gone:
-            del rows[time_ms]
-        write_block(connection, this.node_id, day, rows)
-        removed += len(gone)
-        hours |= {time_ms // HOUR_MS for time_ms in (*gone, *filled)}
-    return removed
+def _withdraw(opened: OpenedDay, time_ms: int, import_id: int) -> list[str]:
+    """Take an import's values out of one reading; the quantities that are free now."""
+    row = opened.rows[time_ms]
+    fills = {name: opened.fills.get((time_ms, name)) for name in opened.values(time_ms)}
+    if row["import_id"] == import_id:
+        gone = [name for name, filler in fills.items() if filler is None or filler == import_id]
+        heirs = {filler for filler in fills.values() if filler is not None and filler != import_id}
+        row["import_id"] = min(heirs, default=None)
+    else:
+        gone = [name for name, filler in fills.items() if filler == import_id]
+    for name, filler in fills.items():
+        if filler is not None and filler in {import_id, row["import_id"]}:
+            del opened.fills[(time_ms, name)]
+    row |= dict.fromkeys(gone)
+    if not opened.values(time_ms):
+        del opened.rows[time_ms]
+    opened.changed.add(time_ms)
+    return gone
 
 
-def _empty(rows: dict[int, Stored], fills: dict[int, list[str]], times: Iterable[int]) -> None:
-    for time_ms in times:
-        for name in fills[time_ms]:
-            rows[time_ms][name] = None
+def _waiting(found: Iterable[aside.Contradiction], node_id: int) -> list[Arrival]:
+    return [Arrival(node_id, c.received_ms, {c.time_ms: {c.quantity: c.value}}, import_id=c.import_id) for c in found]

@@ -60,13 +60,9 @@ def take(connection: Connection, incoming: Sequence[Incoming]) -> Taken:
         if item.message is not None and item.origin.node_id is not None:
             outcome = next(stored)
             outcomes.append(outcome)
-            aside.keep(
-                connection,
-                item.origin,
-                [*item.message.remarks, *outcome.contradictions],
-                # A contradiction is told whole by its remark; other remarks may need the bytes.
-                item.payload if item.message.remarks else None,
-            )
+            aside.keep(connection, item.origin, outcome.contradictions)
+            # A contradiction is told whole by its remark; other remarks may need the bytes.
+            aside.keep(connection, item.origin, item.message.remarks, item.payload)
         else:
             outcomes.append(None)
             reason = item.refusal or Remark("malformed", "The message could not be read.")
@@ -94,7 +90,7 @@ def _count_unknown(connection: Connection, good: Sequence[Incoming]) -> None:
         assert item.message is not None
         assert item.origin.node_id is not None
         for name, times in item.message.unknown.items():
-            key = (item.origin.node_id, name[:100])
+            key = (item.origin.node_id, aside.storable(name)[:100])
             before = counted.get(key, (0, 0))
             counted[key] = (before[0] + times, max(before[1], item.origin.received_ms))
     if counted:
@@ -116,7 +112,8 @@ def _receipts(connection: Connection, good: Sequence[Incoming]) -> list[receipts
             continue
         key = (node_id, message.boot)
         sequences[key].append(message.sequence)
-        if message.oldest is not None:
+        # A node still holds the message it is sending; one that says otherwise must not lose the rest over it.
+        if message.oldest is not None and message.oldest <= message.sequence:
             oldest[key] = max(oldest.get(key, 0), message.oldest)
     earned = (
         receipts.note(connection, node_id, boot, numbers, oldest.get((node_id, boot)))

@@ -1,6 +1,6 @@
 """Sites, nodes, packs, fittings and calibrations: what is known about the hardware, and since when."""
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
@@ -126,6 +126,15 @@ class Inventory:
         return tuple(f for f in self.fittings if f.node == node)
 
 
+# What tells the entries of a kind apart.
+KEYS: Mapping[str, tuple[str, ...]] = {
+    "site": ("name",),
+    "node": ("name",),
+    "pack": ("label",),
+    "fitting": ("node", "start_ms"),
+    "calibration": ("node", "quantity", "start_ms"),
+}
+
 _PACK_LABEL = select(t.pack.c.label).where(t.pack.c.id == t.fitting.c.pack_id).scalar_subquery()
 _NODE_OF_FITTING = select(t.node.c.name).where(t.node.c.id == t.fitting.c.node_id).scalar_subquery()
 _NODE_OF_CALIBRATION = select(t.node.c.name).where(t.node.c.id == t.calibration.c.node_id).scalar_subquery()
@@ -164,6 +173,11 @@ def load(connection: Connection) -> Inventory:
             )
         ),
     )
+
+
+def site_ids(connection: Connection) -> dict[str, int]:
+    """Site names and their keys."""
+    return {row.name: row.id for row in connection.execute(select(t.site.c.name, t.site.c.id).order_by(t.site.c.name))}
 
 
 def node_ids(connection: Connection) -> dict[str, int]:

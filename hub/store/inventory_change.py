@@ -1,7 +1,6 @@
 """Changing the inventory: what a file would change, shown before it is done, and done in one transaction."""
 
 import json
-from collections.abc import Iterable
 from dataclasses import asdict, dataclass, replace
 from typing import Any
 
@@ -11,6 +10,7 @@ from hub.errors import InventoryError
 from hub.store import tables as t
 from hub.store.facts import next_revision
 from hub.store.inventory import (
+    KEYS,
     Calibration,
     Fitting,
     Inventory,
@@ -20,6 +20,7 @@ from hub.store.inventory import (
     load,
     node_ids,
     pack_ids,
+    site_ids,
 )
 from hub.store.inventory_file import Rows, instant_text
 
@@ -56,12 +57,12 @@ def _shown(value: object) -> str:
     return "not stated" if value is None else str(value)
 
 
-_KINDS: tuple[tuple[str, str, type, tuple[str, ...]], ...] = (
-    ("site", "sites", Site, ("name",)),
-    ("node", "nodes", Node, ("name",)),
-    ("pack", "packs", Pack, ("label",)),
-    ("fitting", "fittings", Fitting, ("node", "start_ms")),
-    ("calibration", "calibrations", Calibration, ("node", "quantity", "start_ms")),
+_KINDS: tuple[tuple[str, str, type, Table], ...] = (
+    ("site", "sites", Site, t.site),
+    ("node", "nodes", Node, t.node),
+    ("pack", "packs", Pack, t.pack),
+    ("fitting", "fittings", Fitting, t.fitting),
+    ("calibration", "calibrations", Calibration, t.calibration),
 )
 
 
@@ -77,10 +78,10 @@ def merged(known: Inventory, rows: Rows) -> Inventory:
         A row refers to nothing, or two fittings overlap.
     """
     found: dict[str, tuple[Any, ...]] = {}
-    for kind, plural, make, key_names in _KINDS:
-        entries: dict[tuple[Any, ...], Any] = {_key(e, key_names): e for e in getattr(known, plural)}
+    for kind, plural, make, _table in _KINDS:
+        entries: dict[tuple[Any, ...], Any] = {_key(kind, e): e for e in getattr(known, plural)}
         for row in rows[kind]:
-            key = tuple(row[name] for name in key_names)
+            key = tuple(row[name] for name in KEYS[kind])
             entries[key] = replace(entries[key], **row) if key in entries else make(**row)
         found[plural] = tuple(entries[key] for key in sorted(entries))
     inventory = Inventory(**found)
@@ -88,8 +89,8 @@ def merged(known: Inventory, rows: Rows) -> Inventory:
     return replace(inventory, fittings=_settled(inventory.fittings))
 
 
-def _key(entry: Entry, names: Iterable[str]) -> tuple[Any, ...]:
-    return tuple(getattr(entry, name) for name in names)
+def _key(kind: str, entry: Entry) -> tuple[Any, ...]:
+    return tuple(getattr(entry, name) for name in KEYS[kind])
 
 
 def _check_references(inventory: Inventory) -> None:
@@ -137,12 +138,11 @@ def _settled(fittings: tuple[Fitting, ...]) -> tuple[Fitting, ...]:
 def differences(known: Inventory, wanted: Inventory) -> list[Change]:
     """What would change, in the order in which it has to be done."""
     changes: list[Change] = []
-    for kind, plural, _make, key_names in _KINDS:
-        before = {_key(entry, key_names): asdict(entry) for entry in getattr(known, plural)}
+    for kind, plural, _make, _table in _KINDS:
+        before = {_key(kind, entry): asdict(entry) for entry in getattr(known, plural)}
         for entry in getattr(wanted, plural):
-            key = _key(entry, key_names)
             after = asdict(entry)
-            old = before.get(key, {})
+            old = before.get(_key(kind, entry), {})
             changed = {name: value for name, value in after.items() if not old or old[name] != value}
             if changed:
                 changes.append(Change(kind, _named(entry), {n: old[n] for n in changed} if old else {}, changed))
@@ -166,15 +166,19 @@ def apply(connection: Connection, rows: Rows, *, who: str, now_ms: int) -> list[
     known = load(connection)
     wanted = merged(known, rows)
     changes = differences(known, wanted)
-    for (kind, plural, _make, key_names), table in zip(
-        _KINDS, (t.site, t.node, t.pack, t.fitting, t.calibration), strict=True
-    ):
-        before = {_key(entry, key_names): entry for entry in getattr(known, plural)}
-        for entry in getattr(wanted, plural):
-            key = _key(entry, key_names)
-            if before.get(key) != entry:
-                _store(connection, table, entry, key_names, new=key not in before)
-        del kind
+    for kind, plural, _make, table in _KINDS:
+        before = {_key(kind, entry): entry for entry in getattr(known, plural)}
+        entries = [e for e in getattr(wanted, plural) if before.get(_key(kind, e)) != e]
+        if kind == "fitting":
+            # Two packs that change places would for a moment both be in one node: take all out, then put them in.
+            for fitting in entries:
+                ours = (
+                    t.fitting.c.node_id == node_ids(connection)[fitting.node],
+                    t.fitting.c.start_ms == fitting.start_ms,
+                )
+                connection.execute(t.fitting.delete().where(*ours))
+        for entry in entries:
+            _store(connection, kind, table, entry, new=kind == "fitting" or _key(kind, entry) not in before)
     if changes:
         next_revision(connection)
     for change in changes:
@@ -190,19 +194,18 @@ def apply(connection: Connection, rows: Rows, *, who: str, now_ms: int) -> list[
     return changes
 
 
-def _store(connection: Connection, table: Table, entry: Entry, key_names: tuple[str, ...], *, new: bool) -> None:
+def _store(connection: Connection, kind: str, table: Table, entry: Entry, *, new: bool) -> None:
     values = asdict(entry)
-    key = {name: values[name] for name in key_names}
-    for name, column, known in (("node", "node_id", node_ids), ("pack", "pack_id", pack_ids)):
-        if column in table.c and name in values:
+    names = list(KEYS[kind])
+    for name, column, known in (
+        ("node", "node_id", node_ids),
+        ("pack", "pack_id", pack_ids),
+        ("site", "site_id", site_ids),
+    ):
+        if column in table.c:
             values[column] = known(connection)[values.pop(name)]
-            if name in key:
-                key[column] = values[column]
-                del key[name]
-    if isinstance(entry, Node):
-        site = values.pop("site")
-        values["site_id"] = connection.execute(t.site.select().where(t.site.c.name == site)).one().id
+            names = [column if n == name else n for n in names]
     if new:
         connection.execute(table.insert().values(**values))
     else:
-        connection.execute(table.update().where(*(table.c[n] == v for n, v in key.items())).values(**values))
+        connection.execute(table.update().where(*(table.c[n] == values[n] for n in names)).values(**values))

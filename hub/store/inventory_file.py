@@ -15,9 +15,13 @@ from msgspec import UNSET, Meta, Struct, UnsetType
 
 from hub.errors import InventoryError
 from hub.quantities import BY_NAME
-from hub.store.inventory import Calibration, Fitting, Inventory, Node, Pack, Site
+from hub.stated import convert, nearest
+from hub.store.inventory import KEYS, Calibration, Fitting, Inventory, Node, Pack, Site
 
-Name = Annotated[str, Meta(pattern=r"^[a-z0-9-]{1,64}$")]
+# Instants of an inventory: no node of this kind is older, and a year beyond is a slip of the fingers.
+EARLIEST_YEAR, LATEST_YEAR = 2000, 2199
+
+Name = Annotated[str, Meta(pattern=r"\A[a-z0-9-]{1,64}\Z", description="1 to 64 of a-z, 0-9 and - in quotation marks")]
 Label = Annotated[str, Meta(min_length=1, max_length=64)]
 Instant = Annotated[dt.datetime, Meta(tz=True)]
 Positive = Annotated[float, Meta(gt=0)]
@@ -117,16 +121,18 @@ def parse(text: str, source: str) -> Rows:
     """As ``read_file``, from text."""
     try:
         document = tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
+    except (ValueError, RecursionError) as error:
         raise InventoryError(f"{source} is not TOML: {error}. Correct that line and try again.") from None
     rows: Rows = {kind: [] for kind in _KINDS}
     for kind, entries in document.items():
         if kind not in _KINDS:
-            raise InventoryError(f"{source}: there is no [[{kind}]] in an inventory.{_suggest(kind, _KINDS)}")
-        if not isinstance(entries, list):
+            raise InventoryError(f"{source}: there is no [[{kind}]] in an inventory.{nearest(kind, _KINDS)}")
+        if not isinstance(entries, list) or not all(isinstance(entry, dict) for entry in entries):
             raise InventoryError(f"{source}: write [[{kind}]] with two brackets on each side: there may be several.")
         for number, entry in enumerate(entries, start=1):
-            rows[kind].append(_row(kind, entry, f"{source}: [[{kind}]] number {number}"))
+            where = f"{source}: [[{kind}]] number {number}"
+            rows[kind].append(_row(kind, entry, where))
+            _refuse_twice(kind, rows[kind], where)
     return rows
 
 
@@ -135,19 +141,22 @@ def _row(kind: str, entry: Mapping[str, Any], where: str) -> dict[str, Any]:
     known = struct.__struct_fields__
     for key in entry:
         if key not in known:
-            raise InventoryError(f"{where}: unknown key “{key}”.{_suggest(key, known)}")
+            raise InventoryError(f"{where}: unknown key “{key}”.{nearest(key, known)}")
     try:
-        row = msgspec.convert(entry, struct)
-    except msgspec.ValidationError as error:
-        text = str(error).replace(" - at `$.", ", key “").replace("`", "“", 1).replace("`", "”")
-        hint = ""
-        if "start" in text or "end" in text:
-            hint = " Write instants with their zone, such as 2026-03-01T09:00:00Z."
-        elif "regex" in text:
-            text, hint = "a node's name has 1 to 64 of a-z, 0-9 and -", ""
-        raise InventoryError(f"{where}: {text}.{hint}") from None
-    stated = {key: value for key in known if (value := getattr(row, key)) is not UNSET}
-    return _checked(stated, where)
+        row = convert(entry, struct)
+    except ValueError as error:
+        raise InventoryError(f"{where}: {error}.") from None
+    return _checked({key: value for key in known if (value := getattr(row, key)) is not UNSET}, where)
+
+
+def _refuse_twice(kind: str, rows: list[dict[str, Any]], where: str) -> None:
+    """Two rows about the same thing are a slip: the second would silently overrule the first."""
+    keys = [tuple(row[name] for name in KEYS[kind]) for row in rows]
+    first = keys.index(keys[-1])
+    if first < len(keys) - 1:
+        raise InventoryError(
+            f"{where}: it is about the same {kind} as number {first + 1}. Correct or remove one of them."
+        )
 
 
 def _checked(stated: dict[str, Any], where: str) -> dict[str, Any]:
@@ -156,7 +165,7 @@ def _checked(stated: dict[str, Any], where: str) -> dict[str, Any]:
     if zone is not None:
         try:
             zoneinfo.ZoneInfo(zone)
-        except (zoneinfo.ZoneInfoNotFoundError, ValueError):
+        except (zoneinfo.ZoneInfoNotFoundError, ValueError, OSError):
             near = difflib.get_close_matches(zone, zoneinfo.available_timezones(), n=1)
             raise InventoryError(
                 f"{where}: there is no time zone “{zone}”."
@@ -164,20 +173,18 @@ def _checked(stated: dict[str, Any], where: str) -> dict[str, Any]:
             ) from None
     quantity = stated.get("quantity")
     if quantity is not None and quantity not in BY_NAME:
-        raise InventoryError(f"{where}: there is no quantity “{quantity}”.{_suggest(quantity, BY_NAME)}")
+        raise InventoryError(f"{where}: there is no quantity “{quantity}”.{nearest(quantity, BY_NAME)}")
     for key in ("start", "end"):
         if key in stated:
-            stated[f"{key}_ms"] = round(stated.pop(key).timestamp() * 1000)
+            moment = stated.pop(key)
+            if not EARLIEST_YEAR <= moment.year <= LATEST_YEAR:
+                raise InventoryError(f"{where}: its {key} is in the year {moment.year}. Correct the year.")
+            stated[f"{key}_ms"] = round(moment.timestamp() * 1000)
     if stated.get("end_ms", float("inf")) <= stated.get("start_ms", float("-inf")):
         raise InventoryError(f"{where}: its end lies before its start.")
     if "commissioned" in stated:
         stated["commissioned"] = stated["commissioned"].isoformat()
     return stated
-
-
-def _suggest(word: str, known: Any) -> str:  # noqa: ANN401 - any collection of names
-    near = difflib.get_close_matches(word, list(known), n=1, cutoff=0.5)
-    return f" Did you mean “{near[0]}”?" if near else f" Known here: {', '.join(known)}."
 
 
 def write(inventory: Inventory) -> str:
@@ -195,17 +202,20 @@ def write(inventory: Inventory) -> str:
 
 
 def _table(kind: str, row: Site | Node | Pack | Fitting | Calibration) -> str:
+    required = {known.name for known in msgspec.structs.fields(_KINDS[kind]) if known.required}
     lines = [f"[[{kind}]]"]
     for spec in fields(row):
         value = getattr(row, spec.name)
-        if value is None or value == spec.default:
+        if value is None or (value == spec.default and spec.name not in required):
             continue
         if spec.name.endswith("_ms"):
             lines.append(f"{spec.name.removesuffix('_ms')} = {instant_text(value)}")
         elif spec.name == "commissioned":
             lines.append(f"commissioned = {value}")
         else:
-            lines.append(f"{spec.name} = {json.dumps(value, ensure_ascii=False)}")
+            # TOML's strings are JSON's but for one character that JSON leaves as it is.
+            text = json.dumps(value, ensure_ascii=False).replace("\x7f", "\\u007f")
+            lines.append(f"{spec.name} = {text}")
     return "\n".join(lines) + "\n"
 
 

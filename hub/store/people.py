@@ -2,7 +2,7 @@
 
 import hashlib
 import secrets
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Literal
 
 from sqlalchemy import Connection, delete, select, update
@@ -22,7 +22,7 @@ class Account:
     id: int
     name: str
     role: Role
-    password_hash: str
+    password_hash: str = field(repr=False)
     created_ms: int
 
 
@@ -107,7 +107,7 @@ def withdraw(connection: Connection, secret: str) -> bool:
 
 def digest(secret: str) -> str:
     """What is kept of a secret with 256 random bits; such a one needs no slow hash."""
-    return hashlib.sha256(secret.encode()).hexdigest()
+    return hashlib.sha256(secret.encode("utf-8", "surrogatepass")).hexdigest()
 
 
 @dataclass(frozen=True, slots=True)
@@ -116,7 +116,7 @@ class Credential:
 
     node_id: int
     username: str
-    secret_hash: str
+    secret_hash: str = field(repr=False)
 
 
 def credentials(connection: Connection) -> list[Credential]:

@@ -12,7 +12,8 @@ from sqlalchemy import Connection, delete, func, select
 from hub.quantities import NAMES
 from hub.series import EMPTY, Series
 from hub.store import tables as t
-from hub.store.append import Arrival, Outcome, append
+from hub.store.append import append
+from hub.store.arrivals import Arrival, Outcome
 from hub.store.blocks import unpack
 from hub.store.layout import COLUMNS, DAY_MS, HOUR_MS, SCALES, fixed_point, write_block
 
@@ -46,8 +47,8 @@ def seal(connection: Connection, node_id: int, before_ms: int, most: int = 40) -
             break
         day = first // DAY_MS
         inside = (r.node_id == node_id, r.time_ms >= day * DAY_MS, r.time_ms < (day + 1) * DAY_MS)
-        result = connection.execute(select(*(r[name] for name in COLUMNS)).where(*inside))
-        write_block(connection, node_id, day, {row[0]: dict(zip(COLUMNS, row, strict=True)) for row in result})
+        rows = connection.execute(select(*(r[name] for name in COLUMNS)).where(*inside).order_by(r.time_ms))
+        write_block(connection, node_id, day, [tuple(row) for row in rows.all()])
         connection.execute(delete(t.reading).where(*inside))
         sealed += 1
     return sealed
@@ -79,18 +80,14 @@ def read(
     if not parts:
         return EMPTY
     parts.sort(key=lambda part: int(part.time_ms[0]))
-    if len(parts) == 1:
-        return parts[0]
+    times = np.concatenate([part.time_ms for part in parts])
     present = [name for name in wanted if any(name in part.columns for part in parts)]
-    series = Series(
-        np.concatenate([part.time_ms for part in parts]),
-        {name: np.concatenate([part.get(name) for part in parts]) for name in present},
-    )
-    if np.array_equal(series.time_ms, np.sort(series.time_ms)):
-        return series
-    # A sealed day lies between two that are not (a late backlog).
-    order = np.argsort(series.time_ms)
-    return Series(series.time_ms[order], {name: values[order] for name, values in series.columns.items()})
+    columns = {name: np.concatenate([part.get(name) for part in parts]) for name in present}
+    if not (times[1:] > times[:-1]).all():
+        # A sealed day lies between two that are not (a late backlog).
+        order = np.argsort(times)
+        times, columns = times[order], {name: values[order] for name, values in columns.items()}
+    return Series(times, columns)
 
 
 def _read_blocks(
@@ -104,12 +101,16 @@ def _read_blocks(
     ).scalars()
     for data in found.all():
         columns = unpack(data, {"time_ms", *wanted})
-        values = {
-            name: np.where(columns.present[name], columns.values[name] / SCALES[name], np.nan)
-            for name in wanted
-            if name in columns.values
-        }
-        yield Series(columns.values["time_ms"], values).between(start_ms, end_ms)
+        first, last = np.searchsorted(columns.values["time_ms"], [start_ms, end_ms])
+        part = slice(int(first), int(last))
+        yield Series(
+            columns.values["time_ms"][part],
+            {
+                name: np.where(columns.present[name][part], columns.values[name][part] / SCALES[name], np.nan)
+                for name in wanted
+                if name in columns.values and columns.present[name][part].any()
+            },
+        )
 
 
 def _read_rows(connection: Connection, node_id: int, start_ms: int, end_ms: int, wanted: Sequence[str]) -> Series:

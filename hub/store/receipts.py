@@ -41,12 +41,12 @@ def note(
     if oldest is not None and oldest > FIRST_SEQUENCE:
         # What the node no longer holds will never come: count it as passed.
         merged = merge_runs([*merged, (FIRST_SEQUENCE, oldest - 1)])
-    if merged != sorted(runs):
-        connection.execute(delete(t.received_run).where(*mine))
-        connection.execute(
-            t.received_run.insert(),
-            [{"node_id": node_id, "boot": boot, "first": first, "last": last} for first, last in merged],
-        )
+    # A node on a poor link has many runs: only those that changed are written.
+    for first, _ in sorted(set(runs) - set(merged)):
+        connection.execute(delete(t.received_run).where(*mine, r.first == first))
+    added = [{"node_id": node_id, "boot": boot, "first": a, "last": b} for a, b in sorted(set(merged) - set(runs))]
+    if added:
+        connection.execute(t.received_run.insert(), added)
     if merged and merged[0][0] <= FIRST_SEQUENCE:
         return Receipt(node_id, boot, merged[0][1])
     return None

@@ -7,10 +7,10 @@ from alembic import command
 from alembic.config import Config
 from alembic.migration import MigrationContext
 from alembic.script import ScriptDirectory
-from sqlalchemy import Connection
+from sqlalchemy import Connection, inspect
 
 from hub.errors import StoreError
-from hub.store.engine import Database
+from hub.store.engine import Database, in_plain_words
 
 
 def scripts_folder() -> Path:
@@ -48,13 +48,19 @@ def prepare(database: Database) -> None:
     Raises
     ------
     StoreError
-        The database is of a newer version, or the upgrade would break a reference.
+        The file is another program's or a newer version's, there is no room for the copy, or the upgrade would break
+        a reference.
     """
     head = head_revision()
     with database.write() as connection:
         current = revision_of(connection)
+        foreign = current is None and bool(inspect(connection).get_table_names())
     if current == head:
         return
+    if foreign:
+        raise StoreError(
+            f"The file {database.file} is not a Packfold database. Move it away or choose another --data folder."
+        )
     known = {script.revision for script in ScriptDirectory.from_config(configuration()).walk_revisions()}
     if current is not None and current not in known:
         raise StoreError(
@@ -68,7 +74,7 @@ def prepare(database: Database) -> None:
 
 def migrate(database: Database, revision: str) -> None:
     """Move the schema to a revision, forward or back, as one transaction."""
-    with database.writer.connect() as connection:
+    with in_plain_words(database.file), database.writer.connect() as connection:
         driver = connection.connection.driver_connection
         assert driver is not None
         driver.execute("PRAGMA foreign_keys=OFF")
@@ -94,15 +100,16 @@ def migrate(database: Database, revision: str) -> None:
 
 
 def _keep_copy(database: Database, current: str) -> None:
-    """A consistent copy beside the database before its schema changes."""
+    """A consistent copy beside the database before its schema changes, in place of one from an earlier attempt."""
     target = database.file.with_name(f"{database.file.name}.before-{current}")
-    if target.exists():
-        return
     if shutil.disk_usage(database.file.parent).free < 2 * database.file.stat().st_size:
         raise StoreError(
-            f"There is no room for a copy of {database.file} before its upgrade. Free as much space as the file has."
+            f"There is no room for a copy of {database.file} before its upgrade. Free twice as much space as it has."
         )
-    with database.writer.connect() as connection:
+    unfinished = target.with_name(f"{target.name}.part")
+    unfinished.unlink(missing_ok=True)
+    with in_plain_words(database.file), database.writer.connect() as connection:
         driver = connection.connection.driver_connection
         assert driver is not None
-        driver.execute("VACUUM INTO ?", (str(target),))
+        driver.execute("VACUUM INTO ?", (str(unfinished),))
+    unfinished.replace(target)

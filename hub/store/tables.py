@@ -161,7 +161,20 @@ set_aside = Table(
     Column("value", Float),
     Column("values", Text),
     Column("payload", LargeBinary),
-    Index("ix_set_aside_node_id_received_ms", "node_id", "received_ms"),
+    Index("ix_set_aside_node_id", "node_id"),
+    Index("ix_set_aside_node_id_reason_time_ms", "node_id", "reason", "time_ms"),
+)
+
+# How often something was set aside, also where too many rows of the same kind were there to keep another one. Node 0
+# stands for names that belong to no known node.
+aside_total = Table(
+    "aside_total",
+    metadata,
+    Column("node_id", Integer, primary_key=True),
+    Column("source", Text, primary_key=True),
+    Column("reason", Text, primary_key=True),
+    Column("count", Integer, nullable=False),
+    sqlite_with_rowid=False,
 )
 
 unknown_name = Table(
@@ -207,14 +220,17 @@ log_import = Table(
     Column("set_aside", Integer, nullable=False),
 )
 
-# Quantities that an import added to a reading which was already there, so that the import can be taken back.
+# Values that only an import vouches for, in readings that somebody else brought or the node confirmed since: so that
+# the import can be taken back to the value. In a reading whose ``import_id`` is set, that import vouches for the rest.
 import_fill = Table(
     "import_fill",
     metadata,
-    Column("import_id", Integer, ForeignKey("log_import.id"), primary_key=True),
     _node(primary=True),
     Column("time_ms", Millis, primary_key=True),
     Column("quantity", Text, primary_key=True),
+    Column("import_id", Integer, ForeignKey("log_import.id"), nullable=False),
+    Index("ix_import_fill_import_id", "import_id"),
+    sqlite_with_rowid=False,
 )
 
 log_mapping = Table(
@@ -247,11 +263,13 @@ day_figure = Table(
     Column("pack_id", Integer, ForeignKey("pack.id")),
     Column("coverage", Float, nullable=False),
     Column("observed_s", Float, nullable=False),
+    Column("bridged_s", Float, nullable=False),
     Column("panel_wh", Float),
     Column("charge_ah", Float),
     Column("discharge_ah", Float),
     Column("charge_uncertainty_ah", Float),
     Column("discharge_uncertainty_ah", Float),
+    Column("offset_removed_a", Float),
     Column("charge_wh", Float),
     Column("discharge_wh", Float),
     Column("load_wh", Float),
@@ -284,6 +302,15 @@ charge_figure = Table(
     Column("confidence", Float),
     Column("overcharge_ah", Float),
     Column("evidence", Text, nullable=False),
+)
+
+clear_sky = Table(
+    "clear_sky",
+    metadata,
+    _node(primary=True),
+    Column("start_ms", Millis, primary_key=True),
+    Column("digest", Text, nullable=False),
+    Column("data", LargeBinary, nullable=False),
 )
 
 finding_figure = Table(

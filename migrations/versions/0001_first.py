@@ -152,11 +152,13 @@ def upgrade() -> None:
         sa.Column("pack_id", sa.Integer(), nullable=True),
         sa.Column("coverage", sa.Float(), nullable=False),
         sa.Column("observed_s", sa.Float(), nullable=False),
+        sa.Column("bridged_s", sa.Float(), nullable=False),
         sa.Column("panel_wh", sa.Float(), nullable=True),
         sa.Column("charge_ah", sa.Float(), nullable=True),
         sa.Column("discharge_ah", sa.Float(), nullable=True),
         sa.Column("charge_uncertainty_ah", sa.Float(), nullable=True),
         sa.Column("discharge_uncertainty_ah", sa.Float(), nullable=True),
+        sa.Column("offset_removed_a", sa.Float(), nullable=True),
         sa.Column("charge_wh", sa.Float(), nullable=True),
         sa.Column("discharge_wh", sa.Float(), nullable=True),
         sa.Column("load_wh", sa.Float(), nullable=True),
@@ -174,6 +176,15 @@ def upgrade() -> None:
         batch_op.create_index("ix_day_figure_node_id_date", ["node_id", "date"], unique=False)
         batch_op.create_index("ix_day_figure_pack_id_date", ["pack_id", "date"], unique=False)
 
+    op.create_table(
+        "clear_sky",
+        sa.Column("node_id", sa.Integer(), nullable=False),
+        sa.Column("start_ms", sa.BigInteger().with_variant(sa.Integer(), "sqlite"), nullable=False),
+        sa.Column("digest", sa.Text(), nullable=False),
+        sa.Column("data", sa.LargeBinary(), nullable=False),
+        sa.ForeignKeyConstraint(["node_id"], ["node.id"], name=op.f("fk_clear_sky_node_id_node")),
+        sa.PrimaryKeyConstraint("node_id", "start_ms", name=op.f("pk_clear_sky")),
+    )
     op.create_table(
         "finding_figure",
         sa.Column("node_id", sa.Integer(), nullable=False),
@@ -318,7 +329,8 @@ def upgrade() -> None:
         sa.PrimaryKeyConstraint("id", name=op.f("pk_set_aside")),
     )
     with op.batch_alter_table("set_aside", schema=None) as batch_op:
-        batch_op.create_index("ix_set_aside_node_id_received_ms", ["node_id", "received_ms"], unique=False)
+        batch_op.create_index("ix_set_aside_node_id", ["node_id"], unique=False)
+        batch_op.create_index("ix_set_aside_node_id_reason_time_ms", ["node_id", "reason", "time_ms"], unique=False)
 
     op.create_table(
         "unknown_name",
@@ -330,23 +342,41 @@ def upgrade() -> None:
         sa.PrimaryKeyConstraint("node_id", "name", name=op.f("pk_unknown_name")),
     )
     op.create_table(
+        "aside_total",
+        sa.Column("node_id", sa.Integer(), nullable=False),
+        sa.Column("source", sa.Text(), nullable=False),
+        sa.Column("reason", sa.Text(), nullable=False),
+        sa.Column("count", sa.Integer(), nullable=False),
+        sa.PrimaryKeyConstraint("node_id", "source", "reason", name=op.f("pk_aside_total")),
+        sqlite_with_rowid=False,
+    )
+    op.create_table(
         "import_fill",
-        sa.Column("import_id", sa.Integer(), nullable=False),
         sa.Column("node_id", sa.Integer(), nullable=False),
         sa.Column("time_ms", sa.BigInteger().with_variant(sa.Integer(), "sqlite"), nullable=False),
         sa.Column("quantity", sa.Text(), nullable=False),
+        sa.Column("import_id", sa.Integer(), nullable=False),
         sa.ForeignKeyConstraint(["import_id"], ["log_import.id"], name=op.f("fk_import_fill_import_id_log_import")),
         sa.ForeignKeyConstraint(["node_id"], ["node.id"], name=op.f("fk_import_fill_node_id_node")),
-        sa.PrimaryKeyConstraint("import_id", "node_id", "time_ms", "quantity", name=op.f("pk_import_fill")),
+        sa.PrimaryKeyConstraint("node_id", "time_ms", "quantity", name=op.f("pk_import_fill")),
+        sqlite_with_rowid=False,
     )
+    with op.batch_alter_table("import_fill", schema=None) as batch_op:
+        batch_op.create_index("ix_import_fill_import_id", ["import_id"], unique=False)
+
 
 
 def downgrade() -> None:
 
+    with op.batch_alter_table("import_fill", schema=None) as batch_op:
+        batch_op.drop_index("ix_import_fill_import_id")
+
     op.drop_table("import_fill")
+    op.drop_table("aside_total")
     op.drop_table("unknown_name")
     with op.batch_alter_table("set_aside", schema=None) as batch_op:
-        batch_op.drop_index("ix_set_aside_node_id_received_ms")
+        batch_op.drop_index("ix_set_aside_node_id_reason_time_ms")
+        batch_op.drop_index("ix_set_aside_node_id")
 
     op.drop_table("set_aside")
     op.drop_table("received_run")
@@ -358,6 +388,7 @@ def downgrade() -> None:
     op.drop_table("log_import")
     op.drop_table("ledger")
     op.drop_table("fitting")
+    op.drop_table("clear_sky")
     op.drop_table("finding_figure")
     with op.batch_alter_table("day_figure", schema=None) as batch_op:
         batch_op.drop_index("ix_day_figure_pack_id_date")
