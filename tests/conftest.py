@@ -6,11 +6,16 @@ from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
+from hypothesis import settings
 
 from hub.store import inventory_change, inventory_file, schema
 from hub.store import inventory as store_inventory
 from hub.store.engine import DATABASE_NAME, Database
 from hub.store.inventory import Inventory
+
+# A machine that is busy with something else must not fail a property.
+settings.register_profile("unhurried", deadline=None)
+settings.load_profile("unhurried")
 
 MEASURED = (
     Path(os.environ["PACKFOLD_MEASURED"])

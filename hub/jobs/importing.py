@@ -167,7 +167,11 @@ class _Import:
         progress: Callable[[int], None] | None,
     ) -> Report:
         digest = _sha256(self._path)
-        first = next(chunks, None)  # a file that is no log at all is refused before anything is written
+        # A file that is no log at all is refused before anything is written.
+        first = next(chunks, None)
+        if first is None or not (first.taken or first.headers):
+            why = f" Line {first.set_aside[0].line}: {first.set_aside[0].detail}" if first and first.set_aside else ""
+            raise PayloadError(f"{self._path.name} holds no line of a node log.{why} Nothing was imported.")
         with self._database.write() as connection:
             earlier = imports.known(connection, self._node_id, digest)
             import_id = imports.begin(connection, self._node_id, self._path.name, digest, self._now_ms)

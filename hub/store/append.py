@@ -11,12 +11,16 @@ from dataclasses import dataclass, field
 import numpy as np
 from sqlalchemy import Connection, select
 
+from hub.errors import PayloadError
 from hub.store import tables as t
 from hub.store.arrivals import Arrival, Meeting, Outcome
 from hub.store.facts import next_revision
 from hub.store.layout import DAY_MS, HOUR_MS, SCALES
 from hub.store.merge import merge
 from hub.store.opened import in_parts
+
+# Beyond this a stored integer does not fit its 64 bits.
+LARGEST = 2.0**63
 
 _HEAD = ("node_id", "time_ms", *t.EVIDENCE)
 
@@ -41,9 +45,11 @@ class _Shape:
     def insert(self, connection: Connection) -> None:
         """Insert all of them. Columns without any value are left out: binding nothing costs as much as a value."""
         scales = np.array([SCALES[name] for name in self.names], np.float64)
-        numbers = np.rint(np.array(self.values).reshape(-1, scales.size) * scales).astype(np.int64)
+        numbers = np.rint(np.array(self.values).reshape(-1, scales.size) * scales)
+        if not (np.abs(numbers) < LARGEST).all():
+            raise PayloadError("A value is not a finite number, or beyond what can be stored; leave it out.")
         columns: dict[str, Sequence[int | None]] = dict(zip(_HEAD, zip(*self.heads, strict=True), strict=True))
-        columns |= zip(self.names, numbers.T.tolist(), strict=True)
+        columns |= zip(self.names, numbers.astype(np.int64).T.tolist(), strict=True)
         stated = {name: column for name, column in columns.items() if column.count(None) < len(column)}
         marks = ", ".join("?" * len(stated))
         statement = f"INSERT INTO reading ({', '.join(stated)}) VALUES ({marks})"  # noqa: S608 - own names

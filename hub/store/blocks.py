@@ -1,8 +1,8 @@
 """One UTC day of one node's readings as compressed columns.
 
 A day that nobody writes to any more takes a ninth of the space and less than a tenth of the time to read in this form.
-The form is lossless: integers in, the same integers out. Each column is compressed by itself, so that reading one quantity
-does not unpack the others.
+The form is lossless: integers in, the same integers out. Each column is compressed by itself, so that reading one
+quantity does not unpack the others.
 
 Layout: the bytes ``PB1``, the CRC-32 of all that follows and the length of the directory (4 bytes each, little endian),
 the directory as MessagePack ``[count, [[name, steps, width, present_bytes, stored_bytes], ...]]``, then the columns. A

@@ -15,7 +15,7 @@ WEEKS_UP_TO_MS = 75 * DAY_MS
 MONTHS_UP_TO_MS = 3 * 365 * DAY_MS
 HOURS_APART = 3
 QUARTER_H = 6
-EDGE_SHARE = 0.04
+EDGE_SHARE = 0.05
 
 
 @dataclass(frozen=True, slots=True)

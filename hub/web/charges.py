@@ -5,7 +5,7 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from zoneinfo import ZoneInfo
 
-from hub.web.rows import Row
+from hub.web.days import Row
 from hub.web.sentences import confidence, ending
 from hub.web.words import MINUS, NBSP, NOT_KNOWN, figure, when
 

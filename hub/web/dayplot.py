@@ -12,10 +12,9 @@ from hub.series import Series
 from hub.web.axis import axis
 from hub.web.charges import Session
 from hub.web.chart import EDGE, EVENTS, NAME, Bar, Chart, Lane, Pen, Tick, draw
-from hub.web.days import start_of
+from hub.web.days import Row, start_of
 from hub.web.ranges import Range
 from hub.web.reduction import Binned, binned
-from hub.web.rows import Row
 from hub.web.strip import pen_lift, temperature_lane, voltage_lane
 from hub.web.words import DAY_MS, figure
 

@@ -3,9 +3,15 @@
 import datetime as dt
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
+from typing import Any, Protocol
 from zoneinfo import ZoneInfo
 
-from hub.web.rows import Row
+
+class Row(Protocol):
+    """A row of figures, from the store or from elsewhere: anything that gives a value by a column's name."""
+
+    def __getitem__(self, name: str, /) -> Any:  # noqa: ANN401 - numbers, texts and nothing
+        """The value of a column."""
 
 
 @dataclass(frozen=True, slots=True)

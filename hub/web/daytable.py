@@ -5,7 +5,7 @@ from dataclasses import dataclass, field
 from zoneinfo import ZoneInfo
 
 from hub.store.inventory import Node
-from hub.web.rows import Row
+from hub.web.days import Row
 from hub.web.sentences import SEEN_ENOUGH
 from hub.web.words import NBSP, NOT_KNOWN, listed, moment, number
 

@@ -12,10 +12,9 @@ from hub.series import Floats, Series
 from hub.store import figures, measured, readings
 from hub.store.engine import Database
 from hub.store.inventory import Calibration, Fitting, Inventory, Node, Pack
-from hub.web.days import by_date, date_back, last_days, local_date, start_of
+from hub.web.days import Row, by_date, date_back, last_days, local_date, start_of
 from hub.web.glance import End, Glance, Latest
 from hub.web.reduction import Binned
-from hub.web.rows import Row
 from hub.web.traces import Traces
 from hub.web.words import DAY_MS, HOUR_MS
 

@@ -8,7 +8,7 @@ from markupsafe import Markup, escape
 
 from hub.web.chart import SCALE_WIDTH
 from hub.web.dayplot import nice_step
-from hub.web.rows import Row
+from hub.web.days import Row
 from hub.web.words import day_words, figure, percent
 
 HEIGHT = 110

@@ -218,7 +218,8 @@ def _set_aside(glance: Glance, _now_ms: int) -> Need | None:
         "set-aside",
         glance.node.name,
         f"{count(total, 'thing')} from {glance.node.name} could not be used in the last 7 days.",
-        f"They are kept with their reason: {listed(parts)}. Its page lists them under “Set aside”. Correct the node or its clock.",
+        f"They are kept with their reason: {listed(parts)}. Its page lists them under “Set aside”. "
+        "Correct the node or its clock.",
     )
 
 

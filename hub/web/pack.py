@@ -10,9 +10,9 @@ from hub.errors import InventoryError
 from hub.store import figures, inventory
 from hub.store.inventory import Fitting, Inventory, Pack
 from hub.web.charges import sessions
+from hub.web.days import Row
 from hub.web.desk import desk
 from hub.web.problems import NotKnownError
-from hub.web.rows import Row
 from hub.web.sentences import cells
 from hub.web.words import zone_sentence
 

@@ -4,8 +4,7 @@ from collections.abc import Sequence
 from zoneinfo import ZoneInfo
 
 from hub.store.inventory import Fitting, Node, Pack
-from hub.web.days import Day
-from hub.web.rows import Row
+from hub.web.days import Day, Row
 from hub.web.words import (
     MINUTE_MS,
     NBSP,
