@@ -29,10 +29,15 @@ _FARTHEST: Final = 0.5
 def nearest(word: str, known: Iterable[str]) -> str:
     """A sentence, after a blank, that names the known word somebody may have meant, or all there are."""
     names = list(known)
-    found = min(names, key=lambda name: (slips(word, name), -_alike(word, name)), default=None)
-    if found is not None and slips(word, found) <= _FARTHEST * max(len(word), len(found)):
+    found = min(names, key=lambda name: (_away(word, name), -_alike(word, name)), default=None)
+    if found is not None and _away(word, found) <= _FARTHEST * max(len(word), len(found)):
         return f" Did you mean “{found}”?"
     return f" Known here: {', '.join(names)}."
+
+
+def _away(word: str, name: str) -> int:
+    """How far a word is from a name; not at all where only the unit at the end is missing."""
+    return 0 if name.startswith(f"{word}_") else slips(word, name)
 
 
 def slips(one: str, other: str) -> int:
@@ -132,9 +137,9 @@ def _bounds(metas: list[Meta]) -> str:
         return f" of {shortest or 0} to {longest} characters"
     at_least, above, at_most = stated("ge"), stated("gt"), stated("le")
     if at_least is not None and at_most is not None:
-        return f" from {at_least:g} to {at_most:g}"
-    low = f" above {above:g}" if above is not None else f" of at least {at_least:g}" if at_least is not None else ""
-    high = f"{' and' if low else ''} at most {at_most:g}" if at_most is not None else ""
+        return f" from {at_least} to {at_most}"
+    low = f" above {above}" if above is not None else f" of at least {at_least}" if at_least is not None else ""
+    high = "" if at_most is None else f" and at most {at_most}" if low else f" of at most {at_most}"
     return low + high
 
 

@@ -148,7 +148,7 @@ def signed(seconds: Floats, first: Floats, last: Floats, factor: tuple[Floats, F
         seconds = np.concatenate((_put(seconds, crossing, share * whole), (1.0 - share) * whole))
         first, last = np.concatenate((first, zero)), np.concatenate((_put(last, crossing, zero), b))
     sign = first + last
-    amount = (0.5 * sign if factor is None else _product(first, last, *factor)) * seconds
+    amount = (0.5 * sign if factor is None else mean_product(first, last, *factor)) * seconds
     up, down = sign > 0.0, sign < 0.0
     return Signed(
         positive=float(amount[up].sum()),
@@ -164,7 +164,7 @@ def _put(values: Floats, where: npt.NDArray[np.intp], new: Floats) -> Floats:
     return changed
 
 
-def _product(first: Floats, last: Floats, a: Floats, b: Floats) -> Floats:
+def mean_product(first: Floats, last: Floats, a: Floats, b: Floats) -> Floats:
     """Mean over an interval of the product of two linear quantities (Simpson's rule, exact)."""
     mean: Floats = (first * (2.0 * a + b) + last * (a + 2.0 * b)) / 6.0
     return mean

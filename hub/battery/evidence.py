@@ -228,6 +228,8 @@ def returned(
 ) -> Evidence | None:
     """Charge returned against charge removed since the pack was last full, or against all it can hold.
 
+    The rule is ``charge-returned`` where the last full charge is known, and else ``charge-held``.
+
     Parameters
     ----------
     balance
@@ -270,7 +272,7 @@ def returned(
     k = int(np.argmax(sure > 0.0)) if met else t.size - 1
     mean_a = max(float(flow.in_ah[last] - flow.in_ah[first]) * 3600_000.0 / max(float(t[-1] - t[0]), 1.0), 1e-6)
     return Evidence(
-        rule="charge-returned",
+        rule="charge-held" if balance.full_at_ms is None else "charge-returned",
         met=met,
         value=float(have[-1]),
         limit=float(need[-1]),

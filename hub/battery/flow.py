@@ -5,7 +5,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from hub.battery.charge import HOUR_S, gap_limit_ms
+from hub.battery.charge import HOUR_S, gap_limit_ms, mean_product
 from hub.battery.spec import NodeSpec
 from hub.battery.totals import Bridge
 from hub.series import Floats, Mask, Series, Times
@@ -56,8 +56,7 @@ def flow(series: Series, node: NodeSpec, bridges: Sequence[Bridge] = ()) -> Flow
         first = last
     up, down = _split(first, last)
     volts = known.get("pack_voltage")
-    mean_v = 0.5 * (volts[:-1] + volts[1:])
-    energy = up * hours * np.where(np.isfinite(mean_v), mean_v, 0.0)
+    energy = _energy(first, last, up, volts[:-1], volts[1:]) * hours
     up, down = up * hours, down * hours
     unseen = np.where(gap, length / 1000.0, 0.0)
     for bridge in bridges:
@@ -84,6 +83,13 @@ def _split(first: Floats, last: Floats) -> tuple[Floats, Floats]:
     span = np.where(crossing, np.abs(first - last), 1.0)
     up = np.where(crossing, 0.5 * np.maximum(first, last) ** 2 / span, np.maximum(mean, 0.0))
     return up, up - mean
+
+
+def _energy(first: Floats, last: Floats, up: Floats, a: Floats, b: Floats) -> Floats:
+    """Mean power into the pack; where the current changes its sign, of its positive part at the mean voltage."""
+    exact = np.where(up > 0.0, mean_product(first, last, a, b), 0.0)
+    power = np.where(first * last < 0.0, up * 0.5 * (a + b), exact)
+    return np.where(np.isfinite(power), power, 0.0)
 
 
 def _running(parts: Floats) -> Floats:

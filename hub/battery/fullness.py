@@ -170,7 +170,7 @@ def _limit(flow: Flow, first: int, stop: Stop) -> Evidence | None:
     a, b = first, flow.index(stop.at_ms) + 1
     warm = flow.series.get("pack_temperature")[a:b]
     warm = warm[np.isfinite(warm)]
-    if warm.size == 0 or stop.manner == "faded":
+    if warm.size == 0 or stop.manner in ("faded", "dimmed"):
         return None
     at_stop, highest = float(warm[-3:].max()), float(warm.max())
     met = at_stop >= LIMIT_LOW_C and highest - at_stop < SAME_TEMPERATURE_K
@@ -188,8 +188,9 @@ def _timer(flow: Flow, first: int, stop: Stop, before_s: float | None, node: Nod
 
 
 def _ended_by(found: Sequence[Evidence], stop: Stop, span: Span) -> EndedBy:
-    if stop.manner == "faded":
-        return "sun-ended" if span.cause in ("sun", "dark", "discharge") else "unknown"
+    if stop.manner in ("faded", "dimmed"):
+        went = span.cause in ("sun", "dark") or (span.cause == "discharge" and stop.manner == "faded")
+        return "sun-ended" if went else "unknown"
     by_rule = {e.rule: e for e in found}
     met = {rule for rule, e in by_rule.items() if e.met}
     warm, drop = by_rule.get("temperature-limit"), by_rule.get("voltage-drop")

@@ -23,8 +23,8 @@ from hub.series import Floats, Times
 LAGS_S = (600.0, 1200.0, 2400.0, 4800.0)
 FINER = 2.0**0.5
 WIDTHS_IT_H = (0.0, 0.01, 0.02, 0.04, 0.08, 0.16, 0.32)
-STEPS = 160
-BEGINNINGS = 50
+STEPS = 128
+BEGINNINGS = 40
 LEAST_STEPS = 8
 TINY = 1e-12
 

@@ -3,6 +3,8 @@
 from dataclasses import dataclass
 from typing import Literal
 
+from hub.errors import InventoryError, UsageError
+
 Rule = Literal["trapezoid", "hold"]
 
 
@@ -14,6 +16,12 @@ class PackSpec:
     cells_in_series: int
     cells_in_parallel: int
     rated_capacity_ah: float
+
+    def __post_init__(self) -> None:
+        if self.cells_in_series < 1 or self.cells_in_parallel < 1 or not self.rated_capacity_ah > 0.0:
+            raise InventoryError(
+                f"Pack {self.label} needs at least one cell and a rated capacity above 0 Ah. Correct the inventory."
+            )
 
 
 @dataclass(frozen=True, slots=True)
@@ -54,6 +62,10 @@ class NodeSpec:
     temperature_error_c: float = 0.29
     integration: Rule = "trapezoid"
 
+    def __post_init__(self) -> None:
+        if not self.interval_s > 0.0:
+            raise InventoryError(f"Node {self.name} needs an interval above 0 s. Correct the inventory.")
+
 
 @dataclass(frozen=True, slots=True)
 class Window:
@@ -65,3 +77,9 @@ class Window:
     start_ms: int
     end_ms: int
     pack_leaves: bool = False
+
+    def __post_init__(self) -> None:
+        if self.end_ms <= self.start_ms:
+            raise UsageError(
+                f"A window must end after it starts, but it runs from {self.start_ms} to {self.end_ms} ms."
+            )

@@ -19,15 +19,15 @@ OF_NOTE = 0.3
 PANEL_RISE = 1.03
 DUTY_OFF, DUTY_ON = 0.1, 0.2
 
-Manner = Literal["cut", "broke-off", "faded"]
+Manner = Literal["cut", "broke-off", "dimmed", "faded"]
 
 
 @dataclass(frozen=True, slots=True)
 class Stop:
     """The last reading before the current fell, and how it fell.
 
-    ``cut``: suddenly, and the panel shows that the sun remained. ``broke-off``: suddenly, and nothing shows why.
-    ``faded``: slowly, or with the sun.
+    ``cut``: suddenly, and the panel shows that the sun remained. ``dimmed``: suddenly, and the panel shows that the
+    charger did not do it. ``broke-off``: suddenly, and nothing shows why. ``faded``: slowly, as the sun goes.
     """
 
     at_ms: int
@@ -85,19 +85,17 @@ def charger_cut(flow: Flow, first: int, last: int, usual_a: float, node: NodeSpe
 
 
 def last_stop(flow: Flow, last: int, usual_a: float) -> Stop:
-    """How the last charging of a session ended, where the charger was not seen to cut it.
-
-    A current that faded away went with the sun. One that broke off went with the sun where the panel is watched and
-    showed no sun; otherwise nothing tells.
-    """
+    """How the last charging of a session ended, where the charger was not seen to cut it."""
     t = flow.time_ms
     current = flow.series.get("pack_current")
     begin, after, end = np.searchsorted(t, t[last] + np.array([-1000 * BEFORE_S, 1, 1000 * AFTER_S]))
     before_a = float(np.mean(current[begin : last + 1]))
     after_a = float(np.mean(current[after:end])) if end > after else 0.0
-    watched = bool(np.isfinite(flow.series.get("panel_voltage")[begin:end]).any())
-    sudden = before_a >= OF_NOTE * usual_a and not watched
-    return Stop(int(t[last]), "broke-off" if sudden else "faded", before_a, after_a)
+    manner: Manner = "faded"
+    if before_a >= OF_NOTE * usual_a:
+        watched = bool(np.isfinite(flow.series.get("panel_voltage")[begin:end]).any())
+        manner = "dimmed" if watched else "broke-off"
+    return Stop(int(t[last]), manner, before_a, after_a)
 
 
 def _rolling(total: Floats, number: Times, low: int, high: int) -> Floats:

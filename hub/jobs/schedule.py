@@ -3,6 +3,9 @@
 The computing runs in a process of its own that ends after the work: the libraries it needs take a hundred megabytes and
 a second of start, and neither belongs into the process that receives. It is ``packfold analyse``, so that the
 schedule and a person run the same code.
+
+The pause between runs is a pause, not a time of day: a clock that jumps by decades, as on a board without a battery
+clock, neither delays the next run nor calls for all the missed ones.
 """
 
 import json
@@ -13,8 +16,6 @@ from collections.abc import Callable
 from dataclasses import asdict, dataclass
 from pathlib import Path
 from typing import Any
-
-from apscheduler.schedulers.background import BackgroundScheduler
 
 from hub.settings import Settings
 from hub.store import facts
@@ -56,28 +57,32 @@ class Schedule:
         self._status = JobStatus()
         self._seen_revision = -1
         self._child: subprocess.Popen[str] | None = None
+        self._starting = threading.Lock()
         self._stopping = threading.Event()
-        self._scheduler = BackgroundScheduler(
-            timezone="UTC",
-            job_defaults={"coalesce": True, "max_instances": 1, "misfire_grace_time": None},
-        )
-        self._scheduler.add_job(
-            self.run_once, "interval", seconds=settings.analysis.every_s, id="analysis", replace_existing=True
-        )
+        self._every_s = settings.analysis.every_s
+        self._thread = threading.Thread(target=self._turns, name="analysis", daemon=True)
 
     def start(self) -> None:
         """Begin; the first run starts at once."""
-        self._scheduler.start()
-        self._scheduler.add_job(self.run_once, id="first analysis")
+        self._thread.start()
 
     def stop(self) -> None:
         """End the schedule and a run that is under way; what it had not written yet the next start computes."""
         self._stopping.set()
-        child = self._child
+        with self._starting:
+            child = self._child
         if child is not None and child.poll() is None:
             child.terminate()
-        if self._scheduler.running:
-            self._scheduler.shutdown(wait=True)
+        if self._thread.is_alive():
+            self._thread.join(STOP_WAIT_S)
+
+    def _turns(self) -> None:
+        while not self._stopping.is_set():
+            try:
+                self.run_once()
+            except Exception as error:  # noqa: BLE001 - the schedule must go on, and says what happened
+                self._fail(f"The analysis could not be started: {error}")
+            self._stopping.wait(self._every_s)
 
     def status(self) -> dict[str, Any]:
         """The state as plain values."""
@@ -95,16 +100,22 @@ class Schedule:
         error, document = self._run_child()
         self._status.last_finished_ms = self._now_ms()
         if error:
-            self._status.failures_in_a_row += 1
-            self._status.last_error = error
+            self._fail(error)
         else:
             self._status.failures_in_a_row = 0
             self._status.last_error = ""
             self._status.last_computed = document.get("computed")
             self._seen_revision = revision
 
+    def _fail(self, error: str) -> None:
+        self._status.failures_in_a_row += 1
+        self._status.last_error = error
+
     def _run_child(self) -> tuple[str, dict[str, Any]]:
-        self._child = subprocess.Popen(self._command, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True)
+        with self._starting:
+            if self._stopping.is_set():
+                return "The hub was stopped.", {}
+            self._child = subprocess.Popen(self._command, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True)
         try:
             out, complaint = self._child.communicate(timeout=LONGEST_RUN_S)
         except subprocess.TimeoutExpired:

@@ -88,7 +88,6 @@ class Connection:
         self.acknowledged = 0
         self.accepted = False
         self.ready = False
-        self.accepted = True
         self.session_kept = False
         self.delivers: bool | None = None
         self.dropped: int | None = None
@@ -112,7 +111,6 @@ class Connection:
         client.on_connect = self._on_connect
         client.on_subscribe = self._on_subscribe
         client.on_message = self._on_message
-        client.on_disconnect = self._on_disconnect
         # Being told when to write keeps the library from writing at each single packet.
         client.on_socket_register_write = _leave_to_turn
         self._client = client
@@ -194,9 +192,8 @@ class Connection:
         yet: the last acknowledgements. So whatever still comes is read and dropped until the broker hangs up.
         """
         client = self._client
-        client.on_disconnect = None
         found = client.socket()
-        if found is None:
+        if found is None or found.fileno() < 0:
             return
         if not orderly:
             found.close()
@@ -326,9 +323,6 @@ class Connection:
             self.delivers = True
         elif topic == DROPPED_TOPIC and payload.isdigit():
             self.dropped = int(payload)
-
-    def _on_disconnect(self, *_arguments: object) -> None:
-        """The turn that notices it says so."""
 
 
 def _leave_to_turn(*_arguments: object) -> None:

@@ -256,8 +256,8 @@ class Mosquitto:
             return _taken(place)
         if "assign requested address" in said:
             return _foreign(self._settings.listen)
-        if "Permission denied" in said:
-            return f"Mosquitto may not use {place} or its folder {self._folder}. Choose a port above 1023."
+        if "Error: Permission denied" in said:
+            return f"Mosquitto may not use {place}. Choose a broker.port above 1023."
         last = said.strip().splitlines()[-1]
         return f"Mosquitto ends at once: “{last}”. See {self._log_place}."
 

@@ -33,7 +33,10 @@ def main(arguments: list[str]) -> None:
         prctl(PR_SET_PDEATHSIG, signal.SIGTERM, 0, 0, 0)
     if os.getppid() != parent:
         sys.exit(ORPHANED)
-    os.execv(program[0], program)  # noqa: S606 - no shell is wanted
+    try:
+        os.execv(program[0], program)  # noqa: S606 - no shell is wanted
+    except OSError as error:
+        sys.exit(f"cannot run {program[0]}: {error.strerror}")
 
 
 if __name__ == "__main__":

@@ -69,16 +69,11 @@ def write(connection: Connection, node_id: int, written: Written) -> None:
                 node_id=node_id, start_ms=start, end_ms=end, date=written.entry.date, **written.day
             )
         )
-    if written.charges:
-        connection.execute(
-            t.charge_figure.insert(),
-            [{"node_id": node_id, "window_ms": start, **row} for row in written.charges],
-        )
-    if written.findings:
-        connection.execute(
-            t.finding_figure.insert(),
-            [{"node_id": node_id, "start_ms": start, **row} for row in written.findings],
-        )
+    # One by one: given together, rows would have to state the same columns, or values would be lost silently.
+    for charge in written.charges:
+        connection.execute(t.charge_figure.insert().values(node_id=node_id, window_ms=start, **charge))
+    for finding in written.findings:
+        connection.execute(t.finding_figure.insert().values(node_id=node_id, start_ms=start, **finding))
     e = written.entry
     connection.execute(
         t.ledger.insert().values(

@@ -91,5 +91,5 @@ def _contradiction(meeting: Meeting, name: str, present: int | None) -> Remark:
 def _shown(name: str, number: int) -> str:
     """A stored value with all the digits that tell it from another one."""
     quantity = BY_NAME[name]
-    digits = f"{number / SCALES[name]:.{quantity.decimals}f}"
-    return f"{digits.rstrip('0').rstrip('.') if '.' in digits else digits} {quantity.unit}"
+    digits = f"{number / SCALES[name]:.{quantity.decimals}f}".rstrip("0").rstrip(".")
+    return digits if quantity.unit == "ratio" else f"{digits} {quantity.unit}"

@@ -64,7 +64,7 @@ def packs() -> Response:
     return _json({"packs": describe.packs(known, here.clock())})
 
 
-@blueprint.get("/packs/<label>")
+@blueprint.get("/packs/<path:label>")
 def pack(label: str) -> Response:
     """All that is known of one pack."""
     _refuse_unknown(())

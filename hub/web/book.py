@@ -57,6 +57,8 @@ class Book:
         self._clock = clock
         self._last: Snapshot | None = None
         self._took_ms = 0
+        self._made = 0
+        self._changes = 0
         self._gathering = threading.Lock()
         self.traces = Traces()
 
@@ -72,18 +74,21 @@ class Book:
 
     def refresh(self) -> Snapshot:
         """Gather a new snapshot; whoever asks meanwhile waits for it."""
-        asked_ms = self._clock()
+        seen = self._made
         with self._gathering:
-            last = self._last
-            if last is not None and last.made_ms > asked_ms:
-                return last
+            if self._last is not None and self._made != seen:
+                return self._last
+            changes = self._changes
             made = self._gather(self._clock())
             self._took_ms = max(0, self._clock() - made.made_ms)
-            self._last = made
+            self._made += 1
+            # What was changed meanwhile may be missing in it.
+            self._last = made if self._changes == changes else None
             return made
 
     def forget(self) -> None:
         """Gather anew at the next reading: something was changed here."""
+        self._changes += 1
         self._last = None
 
     def set_aside_of(self, name: str, node_id: int, now_ms: int) -> Mapping[str, int]:

@@ -66,13 +66,15 @@ def download(table: str, form: str) -> Response:
     response = Response(_pieces(stream), mimetype=KINDS[form])
     response.content_length = length
     response.headers["Content-Disposition"] = f'attachment; filename="packfold-{table}.{form}"'
+    # For an answer of which nobody reads the body.
     response.call_on_close(stream.close)
     return response
 
 
 def _pieces(stream: IO[bytes]) -> Iterator[bytes]:
-    while piece := stream.read(PIECE_BYTES):
-        yield piece
+    with stream:
+        while piece := stream.read(PIECE_BYTES):
+            yield piece
 
 
 @blueprint.post("/export/token")

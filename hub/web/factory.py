@@ -49,6 +49,8 @@ def create_app(
     """
     app = Flask("hub.web", static_folder=None)
     app.config.update(MAX_CONTENT_LENGTH=LONGEST_FORM_BYTES, MAX_FORM_PARTS=200)
+    # A label may hold any sign, two strokes in a row as well.
+    app.url_map.merge_slashes = False
     app.extensions[NAME] = Desk(
         database, settings, clock, status or dict, Book(database, clock), hosts.names(settings.web)
     )

@@ -32,7 +32,7 @@ def all_packs() -> str:
     return render_template("packs.html", rows=rows, zones=_zones(known))
 
 
-@blueprint.get("/packs/<label>")
+@blueprint.get("/packs/<path:label>")
 def page(label: str) -> str:
     """One pack."""
     here, now_ms = desk(), desk().clock()

@@ -160,7 +160,9 @@ def simulate(
             if over:
                 run.over_ah.append(over)
                 over = 0.0
-        load = site.load_a + (site.burst_a if site.burst_a and (t + 97.0 * day) % site.burst_every_s < site.burst_s else 0.0)
+        load = site.load_a + (
+            site.burst_a if site.burst_a and (t + 97.0 * day) % site.burst_every_s < site.burst_s else 0.0
+        )
         charge = 0.0 if stopped else available
         current = charge - load
         # level

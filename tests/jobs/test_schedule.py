@@ -40,7 +40,8 @@ def test_it_computes_what_is_there_at_the_start_and_what_comes_later(scheduled):
     wait_for(lambda: len(days(database)) == 1)
     send(database, NODE, {t + 86_400_000: v for t, v in READINGS.items()})
     wait_for(lambda: len(days(database)) == 2)
-    assert made.status()["failures_in_a_row"] == 0
+    wait_for(lambda: made.status()["last_computed"] == 2)
+    assert (made.status()["failures_in_a_row"], made.status()["last_error"]) == (0, "")
 
 
 def test_nothing_new_starts_no_process(scheduled, monkeypatch):

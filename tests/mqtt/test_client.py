@@ -32,7 +32,10 @@ def test_a_file_of_authorities_that_is_none_is_a_sentence(tmp_path):
 @pytest.mark.parametrize(
     ("error", "said"),
     [
-        (ConnectionRefusedError(111, "Connection refused"), "cannot be reached: Connection refused. Check that it runs"),
+        (
+            ConnectionRefusedError(111, "Connection refused"),
+            "cannot be reached: Connection refused. Check that it runs",
+        ),
         (TimeoutError("timed out"), "cannot be reached: timed out"),
         (OSError(), "cannot be reached: OSError"),
         (ssl.SSLError(1, "wrong version number"), "does not speak TLS there"),

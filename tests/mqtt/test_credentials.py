@@ -7,9 +7,9 @@ import subprocess
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+from mqtt.nodes import need_mosquitto
 
 from hub.mqtt.credentials import ALPHABET, hash_secret, new_secret, verify
-from mqtt.conftest import need_mosquitto
 
 # PBKDF2-HMAC-SHA-512 of "passwd" and "salt": the first 32 bytes after one iteration, a vector that several independent
 # implementations publish (from memory; the RFCs have vectors for SHA-1 and SHA-256 only).

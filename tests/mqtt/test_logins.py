@@ -1,7 +1,7 @@
-import os
 import stat
 
 import pytest
+from mqtt.nodes import SECRET
 
 from hub.errors import BrokerError
 from hub.mqtt.access import Access
@@ -9,7 +9,6 @@ from hub.mqtt.credentials import verify
 from hub.mqtt.logins import Logins, access_for_selfcheck, folder, leave_for_selfcheck, write_private
 from hub.mqtt.rights import CHECK_USER, HUB_USER
 from hub.store import inventory, people
-from mqtt.conftest import SECRET
 
 
 def test_everybody_is_there_and_changes_are_noticed(enrolled):
@@ -36,7 +35,7 @@ def test_a_private_file_is_private_and_replaced_whole(tmp_path):
     write_private(path, "two")
     assert path.read_text() == "two"
     assert stat.S_IMODE(path.stat().st_mode) == 0o600
-    assert os.listdir(tmp_path) == ["secret"]
+    assert [file.name for file in tmp_path.iterdir()] == ["secret"]
 
 
 def test_a_private_file_is_not_written_through_a_link(tmp_path):

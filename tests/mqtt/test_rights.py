@@ -9,9 +9,9 @@ from hub.mqtt.rights import CHECK_USER, HUB_USER, as_mosquitto_file, may_publish
 from hub.telemetry.topics import node_problem
 
 names = st.from_regex(r"[a-z0-9-]{1,12}", fullmatch=True)
-topics = st.lists(st.sampled_from(["field", "ridge-east", "gate", "telemetry", "presence", "receipt", "+", "#", ""])).map(
-    "/".join
-)
+topics = st.lists(
+    st.sampled_from(["field", "ridge-east", "gate", "telemetry", "presence", "receipt", "+", "#", ""])
+).map("/".join)
 
 
 @given(names, topics)

@@ -62,7 +62,7 @@ def test_addresses_that_do_not_exist_look_the_same_without_login(guarded):
 
 
 def test_only_pages_without_data_are_open():
-    assert OPEN == {"assets.serve", "health.healthz", "login.ask", "login.check", "login.enter"}
+    assert {"assets.serve", "health.healthz", "login.ask", "login.check", "login.enter"} == OPEN
 
 
 def test_a_token_opens_the_interface_and_a_wrong_one_does_not(guarded):

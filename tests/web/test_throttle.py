@@ -79,7 +79,7 @@ def test_memory_is_bounded():
     assert len(guard._records) <= throttle.MOST_KEYS
 
 
-@given(st.integers(1, 200), st.integers(-10**9, 10**9))
+@given(st.integers(1, 200), st.integers(-(10**9), 10**9))
 def test_nobody_waits_longer_than_the_longest_wait_even_if_the_clock_jumps(failures, jump_ms):
     guard = Throttle()
     fail(guard, failures)
