@@ -24,11 +24,13 @@ _WORDS: Final[Mapping[Any, str]] = {
 }
 # Words further apart than this share of their letters are not a slip of the fingers.
 _FARTHEST: Final = 0.5
+# No key is longer; comparing takes time with the length.
+_LONGEST: Final = 64
 
 
 def nearest(word: str, known: Iterable[str]) -> str:
     """A sentence, after a blank, that names the known word somebody may have meant, or all there are."""
-    names = list(known)
+    names, word = list(known), word[:_LONGEST]
     found = min(names, key=lambda name: (_away(word, name), -_alike(word, name)), default=None)
     if found is not None and _away(word, found) <= _FARTHEST * max(len(word), len(found)):
         return f" Did you mean “{found}”?"

@@ -1,6 +1,7 @@
 """Readings for tests, with one keyword for what a test is about."""
 
 from dataclasses import replace
+from itertools import pairwise
 
 import numpy as np
 
@@ -46,7 +47,7 @@ def fold(series, node, pack, edges_ms, carried=None) -> list[DayResult]:
     """Figures of adjoining windows, each with no more context than the contract promises."""
     carried = Carried() if carried is None else carried
     results = []
-    for start_ms, end_ms in zip(edges_ms[:-1], edges_ms[1:], strict=True):
+    for start_ms, end_ms in pairwise(edges_ms):
         from_ms = min(start_ms - HOUR_MS, start_ms if carried.open_since_ms is None else carried.open_since_ms)
         given = series.between(from_ms, end_ms + 15 * 60_000)
         results.append(analyse(given, Window(start_ms, end_ms), node, pack, carried))

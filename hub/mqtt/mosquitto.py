@@ -98,6 +98,7 @@ class Mosquitto:
         self._thread.start()
         self._settled.wait(2 * START_LIMIT_S + PORT_PATIENCE_S)
         if self._failure is not None:
+            self._thread.join(STOP_LIMIT_S + 5)
             raise self._failure
         if not self._settled.is_set():
             self.stop()

@@ -90,7 +90,7 @@ def idle_stretches(sessions: Sequence[ChargeSession], window: Window) -> list[tu
 def _panel(series: Series, start_ms: int, end_ms: int, node: NodeSpec, sky: ClearSky | None = None) -> Intervals:
     columns = [series.get("panel_current"), series.get("panel_voltage")]
     if sky is not None:
-        columns.append(np.interp(series.time_ms, sky.time_ms, sky.power_w, left=0.0, right=0.0))
+        columns.append(np.interp(series.time_ms, sky.time_ms, sky.power_w))
     return intervals(series.time_ms, columns, start_ms, end_ms, gap_limit_ms(node.interval_s), node.integration)
 
 

@@ -163,6 +163,9 @@ def _paper(chart: Chart) -> str:
     parts += _bars(chart)
     parts.append(_pens(chart, height))
     parts += _ticks(chart, bottom)
+    if chart.named:
+        # Last, so that nothing is drawn across the words.
+        parts += [f'<text class="name" x="6" y="{lane.top - 4}">{escape(lane.name)}</text>' for lane in chart.lanes]
     if chart.note:
         middle = (chart.lanes[0].top + chart.lanes[0].bottom) / 2
         parts.append(f'<text class="note" x="50%" y="{middle:.0f}" text-anchor="middle">{escape(chart.note)}</text>')
@@ -175,8 +178,6 @@ def _rules(chart: Chart, top: int, bottom: int) -> Iterable[str]:
         for value in lane.lines:
             y = f"{lane.y(value):.1f}"
             yield f'<line class="rule" x2="100%" y1="{y}" y2="{y}"/>'
-        if chart.named:
-            yield f'<text class="name" x="6" y="{lane.top - 4}">{escape(lane.name)}</text>'
     for rule in chart.axis.rules:
         x = chart.across(rule.time_ms)
         kind = "rule heavy" if rule.heavy else "rule light"

@@ -71,7 +71,6 @@ class Sensors:
     voltage_noise: float = 0.002
     current_noise: float = 0.0002
     temperature_noise: float = 0.03
-    current_offset_a: float = 0.0
 
 
 @dataclass(frozen=True)
@@ -114,11 +113,106 @@ def broken(rng, days, step_s, shade=0.25, sun_s=240.0, cloud_s=240.0):
     return out
 
 
+class _State:
+    """The pack as it goes."""
+
+    def __init__(self, pack, level, air):
+        self.pack = pack
+        self.level = level
+        self.slow = 0.0
+        self.temperature = air
+
+    def step(self, current, air, dt):
+        """Advance; returns the voltage of a cell."""
+        pack = self.pack
+        share = self._oxygen_share() if current > 0.0 else 0.0
+        self.level += current * (1.0 - share) * dt / 3600.0 / pack.capacity_ah
+        self.level -= pack.self_discharge_per_day * dt / 86_400.0
+        self.level = min(max(self.level, 0.0), 1.0)
+        per_ohm = 2.0 / pack.capacity_ah  # resistances are given for 2 Ah
+        self.slow += (current * pack.slow_per_cell * per_ohm - self.slow) * (1.0 - math.exp(-dt / pack.slow_s))
+        rate = current / pack.capacity_ah
+        cell = (
+            _between(self.level, _LEVELS, _OPEN_CIRCUIT)
+            + pack.branch_v * math.tanh(rate / 0.02)
+            + current * pack.ohmic_per_cell * per_ohm
+            + self.slow
+            + pack.oxygen_rise_v * share * math.tanh(max(rate, 0.0) / 0.05)
+            + pack.voltage_per_k * (self.temperature - 20.0)
+        )
+        heat = current * share * cell + current * current * 0.065 * per_ohm + max(current, 0.0) * (1.0 - share) * 0.05
+        lost = (self.temperature - air) * pack.heat_capacity / pack.cooling_s
+        self.temperature += (heat - lost) * dt / pack.heat_capacity
+        return cell
+
+    def _oxygen_share(self):
+        pack = self.pack
+        stored = 1.0
+        if self.level > pack.acceptance_from:
+            room = (self.level - pack.acceptance_from) / (1.0 - pack.acceptance_from)
+            stored = 1.0 - (1.0 - pack.acceptance_at_full) * room
+        if self.temperature > 30.0:
+            stored *= max(0.3, 1.0 - 0.02 * (self.temperature - 30.0))
+        return 1.0 - stored
+
+
+class _Stop:
+    """The charger's own end, once a day."""
+
+    def __init__(self, charger):
+        self.charger = charger
+        self.night()
+
+    def night(self):
+        self.off = False
+        self.peak = self.peak_current = self.charging_s = 0.0
+
+    def watch(self, state, cell, current, dt):
+        """Whether it stops now."""
+        charger, pack = self.charger, state.pack
+        self.charging_s += dt
+        smooth = cell - current * 0.065 * 2.0 / pack.capacity_ah
+        if smooth > self.peak or self.charging_s < 600.0:
+            self.peak, self.peak_current = smooth, current
+        dropped = self.peak - smooth >= charger.drop_v_per_cell and current > 0.8 * self.peak_current
+        self.off = {
+            "none": False,
+            "voltage-drop": dropped,
+            "temperature": state.temperature >= charger.limit_c,
+            "timer": self.charging_s >= charger.timer_s,
+        }[charger.stop]
+        return self.off
+
+
+class _Truth:
+    """When the pack became full, and what was pushed in afterwards."""
+
+    def __init__(self, level):
+        self.was_full = level >= FULL_LEVEL
+        self.full_at_s = []
+        self.over_ah = []
+        self.over = 0.0
+
+    def note(self, t, level, current, dt):
+        if level >= FULL_LEVEL and current > 0.0:
+            if not self.was_full:
+                self.full_at_s.append(t)
+            self.was_full = True
+            self.over += current * dt / 3600.0
+        elif level < FULL_LEVEL - 0.03:
+            self.was_full = False
+
+    def night(self):
+        if self.over:
+            self.over_ah.append(self.over)
+        self.over = 0.0
+
+
 def simulate(
-    pack=Pack(),  # noqa: B008
-    site=Site(),  # noqa: B008
-    sensors=Sensors(),  # noqa: B008
-    charger=Charger(),  # noqa: B008
+    pack=Pack(),
+    site=Site(),
+    sensors=Sensors(),
+    charger=Charger(),
     days=1.0,
     level=0.5,
     sky=clear,
@@ -132,119 +226,48 @@ def simulate(
     n = int(days * 86_400 / step)
     through = sky(rng, days, step)[:n]
     every = max(1, round(sensors.interval_s / step))
-    rows = []
-    levels = []
-    run = Run(Series(np.empty(0, np.int64)), np.empty(0))
-    temperature = _air(site, 0.0)
-    slow = 0.0
-    stopped = False
-    stopped_day = -1
-    peak = 0.0
-    peak_current = 0.0
-    charging_s = 0.0
-    was_full = level >= FULL_LEVEL
-    over = 0.0
-    length_h = site.sunset_h - site.sunrise_h
-    ocv = _OPEN_CIRCUIT
+    state, stop, truth = _State(pack, level, _air(site, 0.0)), _Stop(charger), _Truth(level)
+    rows, stopped_at_s = [], []
     for k in range(n):
         t = k * step
-        day = int(t // 86_400)
         hour = t / 3600.0 % 24.0
-        air = _air(site, hour)
-        sun = math.sin(math.pi * (hour - site.sunrise_h) / length_h) if site.sunrise_h < hour < site.sunset_h else 0.0
-        available = site.panel_a * max(sun, 0.0) ** 1.2 * through[k]
+        air, sun, load = _air(site, hour), _sun(site, hour), _load(site, t)
         if sun <= 0.0:
-            stopped = False
-            peak = 0.0
-            charging_s = 0.0
-            if over:
-                run.over_ah.append(over)
-                over = 0.0
-        load = site.load_a + (
-            site.burst_a if site.burst_a and (t + 97.0 * day) % site.burst_every_s < site.burst_s else 0.0
-        )
-        charge = 0.0 if stopped else available
-        current = charge - load
-        # level
-        share = 0.0
-        if current > 0.0:
-            share = _oxygen_share(pack, level, temperature)
-            level += current * (1.0 - share) * step / 3600.0 / pack.capacity_ah
-        else:
-            level += current * step / 3600.0 / pack.capacity_ah
-        level -= pack.self_discharge_per_day * step / 86_400.0
-        level = min(max(level, 0.0), 1.0)
-        if level >= FULL_LEVEL and current > 0.0:
-            if not was_full:
-                run.full_at_s.append(t)
-                was_full = True
-            over += current * step / 3600.0
-        elif level < FULL_LEVEL - 0.03:
-            was_full = False
-        # voltage of one cell
-        slow += (current * pack.slow_per_cell * 2.0 / pack.capacity_ah - slow) * (1.0 - math.exp(-step / pack.slow_s))
-        rate = current / pack.capacity_ah
-        branch = pack.branch_v * math.tanh(rate / 0.02)
-        cell = (
-            _between(level, _LEVELS, ocv)
-            + branch
-            + current * pack.ohmic_per_cell * 2.0 / pack.capacity_ah
-            + slow
-            + pack.oxygen_rise_v * share * math.tanh(max(rate, 0.0) / 0.05)
-            + pack.voltage_per_k * (temperature - 20.0)
-        )
-        # heat
-        heat = pack.cells * (current * share * cell + current * current * 0.065 * 2.0 / pack.capacity_ah)
-        heat += pack.cells * max(current, 0.0) * (1.0 - share) * 0.05
-        through_air = (temperature - air) * pack.cells * pack.heat_capacity / pack.cooling_s
-        temperature += (heat - through_air) * step / (pack.cells * pack.heat_capacity)
-        # the charger's own stop
-        if charge > 0.0:
-            charging_s += step
-        if charger.stop != "none" and not stopped and charge > 0.0:
-            smooth = cell - current * 0.065 * 2.0 / pack.capacity_ah
-            if smooth > peak or charging_s < 600.0:
-                peak = smooth
-                peak_current = current
-            drop = peak - smooth
-            if (
-                (charger.stop == "voltage-drop" and drop >= charger.drop_v_per_cell and current > 0.8 * peak_current)
-                or (charger.stop == "temperature" and temperature >= charger.limit_c)
-                or (charger.stop == "timer" and charging_s >= charger.timer_s)
-            ) and stopped_day != day:
-                stopped = True
-                stopped_day = day
-                run.stopped_at_s.append(t)
+            stop.night()
+            truth.night()
+        charge = 0.0 if stop.off else site.panel_a * sun**1.2 * through[k]
+        cell = state.step(charge - load, air, step)
+        truth.note(t, state.level, charge - load, step)
+        if charge > 0.0 and stop.watch(state, cell, charge - load, step):
+            stopped_at_s.append(t)
         if k % every == 0:
-            pack_v = cell * pack.cells
-            panel_v = pack_v + 0.4 if charge > 0.001 else (1.35 * pack_v if sun > 0.05 else 0.2)
-            rows.append((t, pack_v, current, temperature, air, panel_v, charge))
-            levels.append(level)
-    if over:
-        run.over_ah.append(over)
+            volts = cell * pack.cells
+            panel_v = volts + 0.4 if charge > 0.001 else (1.35 * volts if sun > 0.05 else 0.2)
+            rows.append((t, volts, charge - load, state.temperature, air, panel_v, charge, state.level))
+    truth.night()
     table = np.array(rows)
     time_ms = start_ms + np.round(table[:, 0] * 1000).astype(np.int64)
-    m = len(table)
 
-    def measured(values, noise, quantum):
-        noisy = values + rng.normal(0.0, noise, m)
-        return np.round(noisy / quantum) * quantum
+    def measured(column, noise, quantum):
+        return np.round((column + rng.normal(0.0, noise, column.size)) / quantum) * quantum
 
-    run.series = Series(
+    volt, amp, degree = (
+        (sensors.voltage_noise, sensors.voltage_step),
+        (sensors.current_noise, sensors.current_step),
+        (sensors.temperature_noise, sensors.temperature_step),
+    )
+    series = Series(
         time_ms,
         {
-            "pack_voltage": measured(table[:, 1], sensors.voltage_noise, sensors.voltage_step),
-            "pack_current": measured(
-                table[:, 2] + sensors.current_offset_a, sensors.current_noise, sensors.current_step
-            ),
-            "pack_temperature": measured(table[:, 3], sensors.temperature_noise, sensors.temperature_step),
-            "air_temperature": measured(table[:, 4], sensors.temperature_noise, sensors.temperature_step),
-            "panel_voltage": measured(table[:, 5], sensors.voltage_noise, sensors.voltage_step),
-            "panel_current": measured(table[:, 6], sensors.current_noise, sensors.current_step),
+            "pack_voltage": measured(table[:, 1], *volt),
+            "pack_current": measured(table[:, 2], *amp),
+            "pack_temperature": measured(table[:, 3], *degree),
+            "air_temperature": measured(table[:, 4], *degree),
+            "panel_voltage": measured(table[:, 5], *volt),
+            "panel_current": measured(table[:, 6], *amp),
         },
     )
-    run.level = np.array(levels)
-    return run
+    return Run(series, table[:, 7], truth.full_at_s, truth.over_ah, stopped_at_s)
 
 
 def without(series, *names):
@@ -256,14 +279,15 @@ def _air(site, hour):
     return site.air_mean_c + site.air_swing_c * math.cos(2.0 * math.pi * (hour - 15.0) / 24.0)
 
 
-def _oxygen_share(pack, level, temperature):
-    if level <= pack.acceptance_from:
-        stored = 1.0
-    else:
-        stored = 1.0 - (1.0 - pack.acceptance_at_full) * (level - pack.acceptance_from) / (1.0 - pack.acceptance_from)
-    if temperature > 30.0:
-        stored *= max(0.3, 1.0 - 0.02 * (temperature - 30.0))
-    return 1.0 - stored
+def _sun(site, hour):
+    """Clear sun as a share of its noon value in the panel's plane; 0 at night."""
+    up = (hour - site.sunrise_h) / (site.sunset_h - site.sunrise_h)
+    return math.sin(math.pi * up) if 0.0 < up < 1.0 else 0.0
+
+
+def _load(site, t):
+    on = site.burst_a and (t + 97.0 * (t // 86_400)) % site.burst_every_s < site.burst_s
+    return site.load_a + (site.burst_a if on else 0.0)
 
 
 def _between(x, xs, ys):

@@ -1,7 +1,7 @@
 import numpy as np
 import pytest
-
 from builders import START_MS, a_node, every, readings
+
 from hub.battery.balance import Balance, advance, begin, filled
 from hub.battery.flow import flow
 

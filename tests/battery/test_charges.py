@@ -2,9 +2,9 @@ import json
 
 import numpy as np
 import pytest
-
 from battery import pack_model as pm
 from builders import DAY_MS, START_MS, a_node, a_pack, a_window, days, every
+
 from hub.battery.charges import Memory, charges
 from hub.battery.flow import flow
 from hub.battery.fullness import Known

@@ -1,7 +1,7 @@
 import numpy as np
 import pytest
-
 from builders import a_node, every, readings
+
 from hub.battery.current import pack_current, rest_offset_a
 from hub.series import EMPTY
 

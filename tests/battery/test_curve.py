@@ -1,11 +1,11 @@
 import numpy as np
 import pytest
-
 from builders import START_MS, a_node, a_pack, every, readings
+
 from hub.battery.curve import curve, step_resistance
 from hub.battery.flow import flow
 
-RNG = np.random.default_rng(7)
+SEED = 7
 
 
 def of(series, pack=None, node=None):
@@ -32,11 +32,12 @@ def test_means_of_a_session():
 
 
 def test_cloud_steps_show_the_resistance_and_leave_a_smooth_voltage():
+    rng = np.random.default_rng(SEED)
     ohm = 0.24
-    cloudy = np.repeat(RNG.uniform(0.2, 1.0, 200), 4) * 0.4
+    cloudy = np.repeat(rng.uniform(0.2, 1.0, 200), 4) * 0.4
     t = np.arange(cloudy.size) * 60.0
     rise = 5.2 + 0.3 * t / t[-1]
-    volts = rise + ohm * cloudy + RNG.normal(0.0, 0.001, t.size)
+    volts = rise + ohm * cloudy + rng.normal(0.0, 0.001, t.size)
     shape = of(readings(t, pack_current=cloudy, pack_voltage=volts))
     assert shape.resistance_ohm == pytest.approx(ohm, rel=0.03)
     assert shape.cell_v == pytest.approx(np.interp(shape.time_ms, START_MS + 1000 * t, rise) / 4, abs=0.002)
@@ -52,7 +53,7 @@ def test_a_clear_morning_is_not_taken_for_resistance():
 
 
 def test_noise_in_a_steady_current_is_not_taken_for_resistance():
-    current = 1.0 + RNG.normal(0.0, 0.05, 2000)
+    current = 1.0 + np.random.default_rng(SEED).normal(0.0, 0.05, 2000)
     r = step_resistance(current, 5.5 + 0.0 * current, a_pack())
     assert r == pytest.approx(0.0, abs=0.005)
 

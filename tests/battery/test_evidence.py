@@ -2,8 +2,8 @@ import json
 
 import numpy as np
 import pytest
-
 from builders import START_MS, a_node, a_pack, every
+
 from hub.battery import evidence as ev
 from hub.battery.balance import Balance
 from hub.battery.curve import Curve

@@ -1,9 +1,9 @@
 import numpy as np
 import pytest
+from builders import START_MS, a_node, every, readings
 from hypothesis import given
 from hypothesis import strategies as st
 
-from builders import START_MS, a_node, every, readings
 from hub.battery.charge import count
 from hub.battery.flow import flow
 from hub.battery.totals import bridges

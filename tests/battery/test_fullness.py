@@ -2,9 +2,9 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-
 from battery import pack_model as pm
 from builders import START_MS, a_node, a_pack, days, readings
+
 from hub.battery.balance import Balance
 from hub.battery.flow import flow
 from hub.battery.fullness import Known, judge

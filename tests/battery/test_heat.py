@@ -1,7 +1,7 @@
 import numpy as np
 import pytest
-
 from builders import START_MS, a_pack
+
 from hub.battery.curve import Curve
 from hub.battery.heat import fit
 

@@ -1,9 +1,9 @@
 import numpy as np
+from builders import START_MS, a_node, a_pack, every, readings
 from hypothesis import given
 from hypothesis import strategies as st
 from hypothesis.extra import numpy as hnp
 
-from builders import START_MS, a_node, a_pack, every, readings
 from hub.battery.phases import Phase, phases, states, thresholds_a
 from hub.series import EMPTY
 

@@ -1,7 +1,7 @@
 import numpy as np
 import pytest
-
 from builders import START_MS, a_node, a_pack, every, readings
+
 from hub.battery.flow import flow
 from hub.battery.phases import states, thresholds_a
 from hub.battery.sessions import Span, next_span

@@ -1,8 +1,8 @@
 import math
 
 import pytest
-
 from builders import a_node, a_pack
+
 from hub.battery.spec import NodeSpec, Window
 from hub.errors import InventoryError, UsageError
 

@@ -1,7 +1,7 @@
 import numpy as np
 import pytest
-
 from builders import START_MS, a_node, every
+
 from hub.battery.flow import flow
 from hub.battery.stop import charger_cut, last_stop
 

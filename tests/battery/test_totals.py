@@ -1,7 +1,7 @@
 import numpy as np
 import pytest
-
 from builders import START_MS, readings
+
 from hub.battery.totals import Bridge, Last, bridged_s, bridges, newest, preceded
 from hub.series import EMPTY
 

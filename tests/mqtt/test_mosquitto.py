@@ -143,9 +143,9 @@ def test_a_program_that_is_no_broker_is_a_sentence(made, stand_in):
         broker.start()
 
 
-def test_a_program_that_cannot_be_run_is_a_sentence(made, tmp_path):
+def test_a_program_that_cannot_be_run_is_a_sentence(made):
     with pytest.raises(BrokerError, match=r"Mosquitto ends at once: “cannot run .*missing: No such file"):
-        made(tmp_path / "missing").start()
+        made(Path("/nonexistent/missing")).start()
 
 
 def test_a_program_that_never_listens_is_given_up(made, stand_in, monkeypatch):
