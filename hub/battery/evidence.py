@@ -384,7 +384,5 @@ def _lasting(mask: Mask, steps: int) -> Mask:
 
 def _smooth(values: Floats) -> Floats:
     """Mean of three neighbours."""
-    if values.size < LEAST_STEPS:
-        return values
     padded = np.concatenate((values[:1], values, values[-1:]))
     return (padded[:-2] + padded[1:-1] + padded[2:]) / 3.0

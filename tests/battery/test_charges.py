@@ -110,6 +110,21 @@ def test_a_cut_of_a_full_pack_ends_its_session_though_charging_comes_back():
     assert second.start_ms > stop_ms + HOUR_MS
 
 
+def test_a_trickle_after_the_cut_belongs_to_the_session_and_is_overcharge():
+    run = pm.simulate(
+        pm.Pack(acceptance_from=0.93), pm.Site(panel_a=0.8), charger=pm.Charger("temperature", limit_c=38.0), level=0.6
+    )
+    stop_ms = START_MS + round(1000.0 * run.stopped_at_s[0])
+    later = (run.series.time_ms > stop_ms) & (run.series.time_ms < START_MS + 17 * HOUR_MS)
+    current = np.where(later, 0.06, run.series.get("pack_current"))
+    series = type(run.series)(run.series.time_ms, {**run.series.columns, "pack_current": current})
+    (session,), _ = found_in(series, a_window())
+    assert session.end_ms == pytest.approx(START_MS + 17 * HOUR_MS, abs=120_000)
+    assert session.ended_by != "sun-ended"
+    trickle_ah = 0.06 * (session.end_ms - stop_ms) / HOUR_MS
+    assert session.overcharge_ah >= trickle_ah - 0.01
+
+
 def test_without_a_view_of_the_load_there_is_no_balance_to_judge_by():
     run = pm.simulate(site=pm.Site(panel_a=0.2), level=0.4)
     (session,), _ = found_in(run.series, a_window(), load_known=False)
