@@ -151,5 +151,5 @@ def test_a_measured_day_of_sunshine_comes_out_as_its_own_irradiation(packfold, m
     assert float(day["panel_wh"]) == pytest.approx(30.903, rel=2e-4)
     assert float(day["charge_ah"]) == pytest.approx(0.8 * 30.903 / 10.4, rel=5e-4)
     assert 0 < float(day["harvest_ratio"]) < 1.1
-    shown = page(packfold, "/nodes/plain-1?days=all")
+    shown = page(packfold, "/nodes/plain-1?range=all")
     assert "30.9" in shown

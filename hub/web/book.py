@@ -4,6 +4,7 @@ Gathering reads the database for each node; showing does not. A book that is a f
 is gathered beside it, so that nobody waits, and the pages say as of when it is.
 """
 
+import logging
 import threading
 from collections import Counter, defaultdict
 from collections.abc import Callable, Mapping, Sequence
@@ -11,6 +12,7 @@ from dataclasses import dataclass
 
 from markupsafe import Markup
 
+from hub.errors import PackfoldError
 from hub.store import aside, intake, inventory
 from hub.store.engine import Database
 from hub.store.inventory import Inventory
@@ -69,7 +71,7 @@ class Book:
         if last is None or not 0 <= age <= STALE_MS:
             return self.refresh()
         if age > max(FRESH_MS, REST_TIMES * self._took_ms) and not self._gathering.locked():
-            threading.Thread(target=self.refresh, name="strip book", daemon=True).start()
+            threading.Thread(target=self.refresh_beside, name="strip book", daemon=True).start()
         return last
 
     def refresh(self) -> Snapshot:
@@ -85,6 +87,13 @@ class Book:
             # What was changed meanwhile may be missing in it.
             self._last = made if self._changes == changes else None
             return made
+
+    def refresh_beside(self) -> None:
+        """Gather in a thread of its own; what cannot be read now is tried again when the book is asked for."""
+        try:
+            self.refresh()
+        except PackfoldError as error:
+            logging.getLogger(__name__).warning("The strip book could not be gathered: %s", error)
 
     def forget(self) -> None:
         """Gather anew at the next reading: something was changed here."""

@@ -52,9 +52,11 @@ def download(table: str, form: str) -> Response:
         abort(404, f"There is no table “{table}” as {form}. See the page “Take along” for those there are.")
     if not _TWO_AT_A_TIME.acquire(timeout=5):
         abort(503, "Two tables are being written already. Try again when they are done.")
-    stream: IO[bytes] = tempfile.SpooledTemporaryFile(IN_MEMORY_BYTES)  # noqa: SIM115 - closed by the answer
+    here = desk()
+    # In the data folder: the system's folder for such files may be small and in memory.
+    stream: IO[bytes] = tempfile.SpooledTemporaryFile(IN_MEMORY_BYTES, dir=str(here.database.data))  # noqa: SIM115 - closed by the answer
     try:
-        with desk().database.read() as connection:
+        with here.database.read() as connection:
             export.write(connection, table, selection(), cast("export.Format", form), stream)
         length = stream.tell()
         stream.seek(0)

@@ -73,7 +73,7 @@ def _prepare_templates(app: Flask, clock: Callable[[], int]) -> None:
         asset=assets.asset, clock=clock, form_token=access.form_token, stamp=words.stamp, visitor=access.visitor
     )
     environment.filters.update(
-        count=words.count,
+        many=words.count,
         flow=sentences.flow,
         day=words.day_words,
         duration=words.duration,

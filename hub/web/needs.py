@@ -34,7 +34,7 @@ class Need:
     kind
         Short stable word for it.
     node
-        The node it is about.
+        The node it is about; empty where it is about the hub.
     headline
         What is the matter, one sentence.
     advice
@@ -99,7 +99,8 @@ def _heat(glance: Glance, now_ms: int) -> Need | None:
             2,
             "overheating",
             glance.node.name,
-            f"{_who(glance)} was {figure(peak.value, '°C')} at {when(peak.time_ms, glance.zone, now_ms)}.",
+            f"{_who(glance)} reached {figure(peak.value, '°C')} in the last 24 hours, "
+            f"within a quarter of an hour of {when(peak.time_ms, glance.zone, now_ms)}.",
             f"It is {figure(hot, '°C')} now. See on its page what charged it then; shade the box or lower the current "
             "before the next sunny day."
             if hot is not None

@@ -32,8 +32,8 @@ DAYS_SHOWN = 28
 DAYS_SHOWN_LEAST = 7
 ASIDE_SHOWN = 30
 BOOTS_SHOWN = 12
-# Longer stretches are drawn from the figures of their days: a life of readings takes too long to read.
-READINGS_UP_TO_MS = 57 * DAY_MS
+# Stretches of more readings are drawn from the figures of their days: a life of readings takes too long to read.
+READINGS_MOST = 250_000
 # Values older than the newest by more than this are shown with their own time.
 TOGETHER_MS = 90_000
 
@@ -102,7 +102,7 @@ def _stretch(who: Subject, within: Range) -> dict[str, Any]:
         findings = figures.findings(connection, who.node_id, None if whole else within.start_ms - DAY_MS, within.end_ms)
     inside = [row for row in charges if row["end_ms"] is None or row["end_ms"] > within.start_ms]
     listed = sessions(inside, who.zone)
-    by_days = within.end_ms - within.start_ms > READINGS_UP_TO_MS
+    by_days = within.kind != "1d" and (within.end_ms - within.start_ms) / 1000 / who.node.interval_s > READINGS_MOST
     traces = dayplot.life_traces(days, who.zone) if by_days else _traces(who, within)
     harvest = harvested(days[-DAYS_SHOWN:])
     return {

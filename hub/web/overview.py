@@ -7,6 +7,7 @@ from flask import Blueprint, render_template, request
 from hub.web.book import Snapshot
 from hub.web.desk import desk
 from hub.web.glance import Glance
+from hub.web.hubneeds import hub_needs
 from hub.web.needs import Need, needs
 from hub.web.sentences import filled, fitted, heard, is_silent, level
 from hub.web.words import count
@@ -21,14 +22,16 @@ def page() -> str:
     here = desk()
     book, now_ms = here.book.read(), here.clock()
     if not book.glances:
-        return render_template("empty.html", strangers=book.strangers)
+        return render_template(
+            "empty.html", strangers=book.strangers, **sorted_needs((), now_ms, hub_needs(here.status()))
+        )
     pages = -(-len(book.glances) // STRIPS_A_PAGE)
     number = min(max(request.args.get("page", 1, int), 1), pages)
     shown = book.glances[(number - 1) * STRIPS_A_PAGE : number * STRIPS_A_PAGE]
     return render_template(
         "overview.html",
         book=book,
-        **sorted_needs(book.glances, now_ms),
+        **sorted_needs(book.glances, now_ms, hub_needs(here.status())),
         strips=[(glance, state(glance, now_ms), book.strips[glance.node.name]) for glance in shown],
         summary=summary(book),
         page=number,
@@ -51,9 +54,9 @@ def state(glance: Glance, now_ms: int) -> list[str]:
     return [sentence for sentence in ([contact, *sentences] if silent else [*sentences, contact]) if sentence]
 
 
-def sorted_needs(glances: Iterable[Glance], now_ms: int) -> dict[str, list[Need]]:
+def sorted_needs(glances: Iterable[Glance], now_ms: int, others: Iterable[Need] = ()) -> dict[str, list[Need]]:
     """What needs a person, parted into what should not wait and what may."""
-    found = needs(glances, now_ms)
+    found = sorted([*needs(glances, now_ms), *others], key=lambda need: need.rank)
     return {"urgent": [need for need in found if need.urgent], "other": [need for need in found if not need.urgent]}
 
 

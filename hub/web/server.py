@@ -78,15 +78,9 @@ class Pages:
         self._thread = threading.Thread(target=self._serve, args=(self._server,), name="pages", daemon=True)
         self._thread.start()
         # The first visitor should not wait until every node has been looked at once.
-        threading.Thread(target=self._look_ahead, name="first strip book", daemon=True).start()
-
-    def _look_ahead(self) -> None:
         here = self._app.extensions[NAME]
         assert isinstance(here, Desk)
-        try:
-            here.book.refresh()
-        except PackfoldError:
-            logging.getLogger(__name__).warning("The strip book could not be gathered yet.", exc_info=True)
+        threading.Thread(target=here.book.refresh_beside, name="first strip book", daemon=True).start()
 
     def _serve(self, server: Any) -> None:  # noqa: ANN401 - the server's class is private to its library
         while not self._stopping.is_set():

@@ -67,7 +67,9 @@ def test_a_hot_pack_that_stands_is_not_said_to_charge():
 def test_heat_that_has_passed_is_told_as_past():
     peak = Latest(NOW - 3 * HOUR, 47.2)
     need = only(replace(WELL, latest=latest(pack_temperature=31.0), peak_temperature=peak))
-    assert plain(need.headline) == "Pack R-07 on ridge-east was 47 °C at 10:02 BST."
+    assert plain(need.headline) == (
+        "Pack R-07 on ridge-east reached 47 °C in the last 24 hours, within a quarter of an hour of 10:02 BST."
+    )
     assert plain(need.advice).startswith("It is 31 °C now.")
     assert needs([replace(WELL, peak_temperature=Latest(NOW - 25 * HOUR, 47.2))], NOW) == []
 
@@ -76,7 +78,7 @@ def test_heat_last_heard_of_hours_ago_is_not_told_as_present():
     old = {"pack_temperature": Latest(NOW - 2 * HOUR, 56.0)}
     glance = replace(WELL, last_ms=NOW - 2 * HOUR, latest=old, peak_temperature=Latest(NOW - 2 * HOUR, 56.0))
     heat = next(need for need in needs([glance], NOW) if need.kind == "overheating")
-    assert " was " in heat.headline
+    assert " reached " in heat.headline
     assert "not known" in heat.advice
 
 

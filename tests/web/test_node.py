@@ -139,7 +139,7 @@ def test_all_packs_that_were_in_it_are_listed(hub):
 def test_a_long_life_is_drawn_from_its_days(hub, monkeypatch):
     hub.load(ridge())
     hub.simulate("ridge-east", 5)
-    monkeypatch.setattr(node, "READINGS_UP_TO_MS", DAY_MS)
+    monkeypatch.setattr(node, "READINGS_MOST", 1440)
     words = text_of(page(hub, "?range=all"))
     assert "Charge a day: in (bold) and out" in words
 
