@@ -91,6 +91,8 @@ def charges(
     known = memory.known
     found: list[ChargeSession] = []
     at = int(np.searchsorted(t, from_ms))
+    if memory.open_since_ms is not None and at < t.size:
+        state[at] = 1  # an open session keeps its beginning, also where an offset found since has moved the current
     while (span := next_span(running, state, pack, at)) is not None:
         if span.cause is None and window.pack_leaves:
             span = replace(span, cause="pack-left")

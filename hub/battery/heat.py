@@ -27,6 +27,7 @@ STEPS = 128
 BEGINNINGS = 40
 LEAST_STEPS = 8
 TINY = 1e-12
+LARGEST_EXPONENT = 500.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -109,6 +110,8 @@ def _fit_lag(grid: _Grid, lag_s: float) -> tuple[float, Heat]:
     step = np.where(after, heated[None, :] - faded * heated[beginnings][:, None], 0.0)
     best_gain, best_change, best_shape, best_at = 0.0, 0.0, (0, 0.0), np.zeros(n)
     for width in WIDTHS_IT_H:
+        if grid.charge_it_h[-1] > LARGEST_EXPONENT * width > 0.0:
+            continue  # next to so long a charge this width is a step
         answers = step
         if width:
             decay = np.exp(-grid.charge_it_h / width)

@@ -49,6 +49,16 @@ def test_an_open_session_is_returned_open_and_begins_again_from_its_start():
     assert after.open_since_ms is None
 
 
+def test_an_open_session_keeps_its_beginning_when_the_current_is_corrected_since():
+    series = every(
+        60, 48, pack_current=lambda t: np.where((t >= 20 * 3600) & (t <= 28 * 3600), 0.2, -0.01), pack_voltage=5.5
+    )
+    weak = np.where(series.time_ms == START_MS + 20 * HOUR_MS, 0.015, series.get("pack_current"))
+    corrected = type(series)(series.time_ms, {**series.columns, "pack_current": weak})
+    (session,), _ = found_in(corrected, a_window(24, 48), START_MS + 20 * HOUR_MS)
+    assert session.start_ms == START_MS + 20 * HOUR_MS
+
+
 def test_a_session_that_ended_is_not_told_again():
     series = every(
         60, 48, pack_current=lambda t: np.where((t >= 8 * 3600) & (t <= 12 * 3600), 0.2, -0.01), pack_voltage=5.5

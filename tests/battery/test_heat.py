@@ -91,3 +91,10 @@ def test_without_temperatures_power_or_time_there_is_no_fit():
         name: value[:5] if isinstance(value := getattr(curve, name), np.ndarray) else value for name in Curve.__slots__
     }
     assert fit(Curve(**short), a_pack()) is None
+
+
+def test_a_charge_of_many_times_the_capacity_is_no_accident():
+    curve = session(1.0)
+    heat = fit(curve, a_pack(rated_capacity_ah=0.01), lag_s=2400.0)
+    assert np.isfinite(heat.k_per_w).all()
+    assert heat.k_per_w[-1] == pytest.approx(12.0, rel=0.15)

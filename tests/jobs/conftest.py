@@ -3,6 +3,7 @@
 import datetime as dt
 import io
 import itertools
+import math
 
 import pytest
 
@@ -45,7 +46,7 @@ def simulated(name, days, every=5):
         names = list(stretch.columns)
         for i in range(0, stretch.time_ms.size, every):
             values = {n: float(stretch.columns[n][i]) for n in names}
-            found[int(stretch.stamp_s[i] * 1000)] = {n: v for n, v in values.items() if v == v}
+            found[int(stretch.stamp_s[i] * 1000)] = {n: v for n, v in values.items() if not math.isnan(v)}
     return found
 
 
