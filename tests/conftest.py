@@ -8,8 +8,8 @@ from pathlib import Path
 import pytest
 from hypothesis import settings
 
-from hub.store import inventory_change, inventory_file, schema
 from hub.store import inventory as store_inventory
+from hub.store import inventory_change, inventory_file, schema
 from hub.store.engine import DATABASE_NAME, Database
 from hub.store.inventory import Inventory
 

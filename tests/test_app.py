@@ -40,9 +40,7 @@ def prepare(data: Path) -> str:
 
 
 def settings(kind="auto"):
-    return Settings(
-        broker=Broker(port=0, kind=kind), web=Web(listen="127.0.0.1:0"), analysis=Analysis(every_s=0.5)
-    )
+    return Settings(broker=Broker(port=0, kind=kind), web=Web(listen="127.0.0.1:0"), analysis=Analysis(every_s=0.5))
 
 
 def now_ms():

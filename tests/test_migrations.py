@@ -11,7 +11,6 @@ from hub.store import schema
 from hub.store.engine import Database
 from hub.store.tables import metadata
 
-
 # Values that satisfy the checks; any others are 1 or "x".
 ALLOWED = {"current_sensing": "net", "integration": "hold", "role": "keeper", "kind": "token"}
 REVISIONS = [script.revision for script in ScriptDirectory.from_config(schema.configuration()).walk_revisions()]

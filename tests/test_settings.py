@@ -104,7 +104,7 @@ def test_a_variable_for_a_section_that_the_file_has_as_a_value(file):
         ("[broker]\nport = true", "broker.port must be a whole number from 0 to 65535, not true."),
         ("[broker]\nkind = 'other'", "broker.kind must be “auto”, “mosquitto” or “trial”, not “other”."),
         ("[broker]\nroot = '#'", "broker.root must be topic levels of letters, digits, - and _ with / between them"),
-        ("[broker]\nroot = \"field\\n\"", "broker.root must be topic levels"),
+        ('[broker]\nroot = "field\\n"', "broker.root must be topic levels"),
         ("[broker]\nroot = '/field'", "broker.root must be topic levels"),
         ("[broker]\nmessage_limit_bytes = 5", "broker.message_limit_bytes must be a whole number from 1024 to 16777216, not 5."),
         ("[web]\nlisten = '8740'", "web.listen must be an address and a port, such as 127.0.0.1:8740, not “8740”."),
@@ -151,9 +151,8 @@ def test_any_file_is_settings_or_a_sentence(tmp_path_factory, stated):
     try:
         found = load(path, {})
     except SettingsError as error:
-        assert str(error).startswith((str(path), f"The settings file {path}"))
-    else:
-        assert isinstance(found, Settings)
+        found = str(error)
+    assert isinstance(found, Settings) or found.startswith((str(path), f"The settings file {path}"))
 
 
 @pytest.mark.parametrize(

@@ -92,7 +92,7 @@ def test_what_is_right_is_converted():
     ],
 )  # fmt: skip
 def test_what_is_wrong_is_told_by_key_by_what_it_must_be_and_by_what_it_is(document, sentence):
-    with pytest.raises(ValueError, match="must be|is missing") as caught:
+    with pytest.raises(ValueError, match=r"must be|is missing") as caught:
         convert(document, Outer)
     assert str(caught.value) == sentence
 

@@ -16,7 +16,8 @@ from hub.battery.spec import NodeSpec, PackSpec, Window
 LEAST_CHARGE_IT_H = 0.005
 # A charger that has cut a full pack has ended the session once it has stayed off this long.
 STAYS_OFF_MS = 15 * 60_000
-# Charge into a full pack in one day that a maker of sealed cells allows, of the rated capacity (dossier 2.2).
+# Charge into a full pack in one day, of the rated capacity: the intermittent trickle charge that VARTA Microbattery's
+# handbook of sealed cells allows.
 OVERCHARGE_IT_H = 0.10
 
 

@@ -16,8 +16,8 @@ from hub.series import Floats, Times
 STEP_IT_S = 6.0
 SHORTEST_S = 10.0
 LONGEST_S = 120.0
-# Apparent resistance of a cell times its capacity: 25 mohm at 1 kHz for 2 Ah (dossier section 3), twice that over some
-# seconds (section 1.6), as uncertain as it is large.
+# Apparent resistance of a cell times its capacity: 25 mohm at 1 kHz for 2 Ah, and 1.5 to 3 times that over some seconds
+# (both from memory), as uncertain as it is large.
 TYPICAL_OHM_AH = 0.10
 # Currents that count are above a quarter of the usual one.
 OF_NOTE = 0.25

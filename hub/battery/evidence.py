@@ -1,8 +1,12 @@
 """The pieces of evidence for the end of charge, each with its own numbers.
 
 Each function looks at one thing and says what it found: a value, the limit it is held against, when, and a weight in
-units of log-odds, positive for a full pack. Figures come from the dossier's section 2; where a handbook gives a range
-the choice is said at the constant.
+units of log-odds, positive for a full pack.
+
+Sources of the figures, by the names used below: *Panasonic*, Charge Methods for Nickel Metal Hydride Batteries;
+*sheet*, the specification of a 450 mAh AAA cell; *PowerStream*, the engineering note NiMH Charging; *SLUA516*, Texas
+Instruments, by way of a public safety note; *[M]*, common figures from memory. Weights are ours, chosen on simulated
+packs of many kinds.
 """
 
 from dataclasses import dataclass
@@ -17,16 +21,16 @@ from hub.battery.heat import Heat
 from hub.battery.spec import NodeSpec, PackSpec
 from hub.series import Floats, Mask
 
-# A drop from the peak counts at a sustained rate only, and not in the first minutes (hold-off "up to 10 min").
+# A drop from the peak counts at a sustained rate only, and not in the first ten minutes (Panasonic).
 HOLD_OFF_S = 600.0
-DROP_V = 0.005  # a cell; handbooks give 3 to 17 mV, mostly 5 to 10
-DROP_RATE_IT = 0.3  # "reliable from C/2, marginal at C/3"
+DROP_V = 0.005  # a cell (sheet); others give 3 to 17 mV, mostly 5 to 10
+DROP_RATE_IT = 0.3  # reliable from C/2, marginal at C/3 (SLUA516)
 SAME_RATE = 0.2
 DROP_STEPS = 2
 SETTLE_S = 600.0
 MEDIAN_STEPS = 5
 NOISE_FACTOR = 4.0
-# Temperature slope: 0.8 °C/min at 0.5 It (a cell maker's sheet), in proportion to the rate below.
+# Temperature slope: 0.8 °C/min at 0.5 It (sheet), in proportion to the rate below.
 SLOPE_K_PER_MIN = 0.8
 SLOPE_AT_IT = 0.5
 SLOPE_WINDOW_S = 180.0
@@ -35,17 +39,18 @@ PLATEAU_RISE_V = 0.003
 PLATEAU_IT_H = 0.04
 KNEE_RISE_V = 0.010
 KNEE_IT_H = 0.15
-# Level: a cell needs 1.41 V at 20 °C to fill at 0.1 It; voltage falls by about 3 mV a kelvin under charge.
+# Level: a cell needs 1.41 V at 20 °C to fill at 0.1 It (PowerStream); under charge it falls by 3 mV a kelvin [M].
 LEVEL_V = 1.41
 LEVEL_LOW_V = 1.36
 VOLT_PER_K = 0.003
-# Charge factor of a solar day: 1.1 to 1.2 at these rates, more from a shallow discharge.
+# Charge factor: 1.1 to 1.25 at C/2 to C/3 (SLUA516 note), more from a shallow discharge. Self-discharge: a standard
+# cell loses about 20 % in 28 days at 20 °C [M].
 FACTOR, FACTOR_SPREAD = 1.15, 0.12
 SELF_DISCHARGE_PER_DAY = 0.007
 # A pack of unknown level certainly overflows after this much of its rated capacity net.
 BRIM, BRIM_SPREAD = 1.30, 0.15
 IMPOSSIBLE = 1.3
-# Heat: share of the charging power that no longer is stored.
+# Heat: a pack counts as full when a tenth of the charging power is stored and the rest is heat.
 FULL_SHARE = 0.90
 MET_SHARE = 0.70
 HALF_SHARE = 0.55
@@ -53,7 +58,7 @@ CONTRAST = 2.5
 AT_REST = 0.9
 LEAST_OF_EXPECTED = 0.6
 VISIBLE_K = 1.0
-# 28 g and about 1 J/(g K) for an AA cell of 2 to 2.2 Ah, and something for its holder.
+# 28 g and about 1 J/(g K) for an AA cell of 2 to 2.2 Ah [M], and something for its holder.
 HEAT_J_PER_K_AH = 15.0
 # Other numbers of the search.
 LOW_RATE_IT = 0.1

@@ -22,12 +22,11 @@ from hub.series import Floats, Times
 
 LAGS_S = (600.0, 1200.0, 2400.0, 4800.0)
 FINER = 2.0**0.5
-WIDTHS_IT_H = (0.0, 0.01, 0.02, 0.04, 0.08, 0.16, 0.32)
+WIDTHS_IT_H = (0.01, 0.02, 0.04, 0.08, 0.16, 0.32)
 STEPS = 128
 BEGINNINGS = 40
 LEAST_STEPS = 8
 TINY = 1e-12
-LARGEST_EXPONENT = 500.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,63 +84,59 @@ def fit(curve: Curve, pack: PackSpec, lag_s: float | None = None) -> Heat | None
     grid = _grid(curve, pack)
     if grid is None or not grid.power_w.max() > 0.0:
         return None
+    shapes = _shapes(grid)
     if lag_s is not None:
-        return _fit_lag(grid, lag_s)[1]
-    tried = [_fit_lag(grid, lag) for lag in LAGS_S]
-    best = min(tried, key=lambda pair: pair[0])
-    tried = [best, *(_fit_lag(grid, best[1].lag_s * factor) for factor in (1.0 / FINER, FINER))]
-    return min(tried, key=lambda pair: pair[0])[1]
+        return _fit_lag(grid, shapes, lag_s)[1]
+    best = min((_fit_lag(grid, shapes, lag) for lag in LAGS_S), key=lambda pair: pair[0])
+    finer = [_fit_lag(grid, shapes, best[1].lag_s * factor) for factor in (1.0 / FINER, FINER)]
+    return min([best, *finer], key=lambda pair: pair[0])[1]
 
 
-def _fit_lag(grid: _Grid, lag_s: float) -> tuple[float, Heat]:
+def _shapes(grid: _Grid) -> Floats:
+    """How k may go from 0 to 1: one column for each beginning and width."""
+    n = grid.time_ms.size
+    beginnings = np.unique(np.linspace(0, n - 2, min(n - 1, BEGINNINGS)).astype(np.int64))
+    gone = grid.charge_it_h[:, None] - grid.charge_it_h[beginnings][None, :]
+    begun = np.arange(n)[:, None] > beginnings[None, :]
+    shapes = [begun.astype(np.float64)]
+    shapes += [np.where(begun, 1.0 - np.exp(-np.maximum(gone, 0.0) / width), 0.0) for width in WIDTHS_IT_H]
+    return np.concatenate(shapes, axis=1)
+
+
+def _fit_lag(grid: _Grid, shapes: Floats, lag_s: float) -> tuple[float, Heat]:
     """Sum of squares and fit for one time constant."""
     n = grid.time_ms.size
     keep = float(np.exp(-grid.step_s / lag_s))
-    rise = grid.pack_c - _lag(grid.air_c, keep, float(grid.air_c[0]))
-    heated = _lag(grid.power_w, keep, 0.0)
     index = np.arange(n)
-    base, _ = np.linalg.qr(np.column_stack((np.ones(n), heated, keep**index)))
+    since = index[:, None] - index[None, :]
+    lagging = np.where(since >= 0, (1.0 - keep) * keep ** np.maximum(since, 0), 0.0)
+    fade = keep ** (index + 1.0)
+    rise = grid.pack_c - (lagging @ grid.air_c + fade * grid.air_c[0])
+    heated = lagging @ grid.power_w
+    design = np.column_stack((np.ones(n), heated, fade))
+    base, _ = np.linalg.qr(design)
     left = rise - base @ (base.T @ rise)
     flat = float(left @ left)
-    beginnings = np.unique(np.linspace(0, n - 2, min(n - 1, BEGINNINGS)).astype(np.int64))
-    since = index[None, :] - beginnings[:, None]
-    after = since >= 0
-    faded = np.where(after, keep ** np.maximum(since, 0), 0.0)
-    step = np.where(after, heated[None, :] - faded * heated[beginnings][:, None], 0.0)
-    best_gain, best_change, best_shape, best_at = 0.0, 0.0, (0, 0.0), np.zeros(n)
-    for width in WIDTHS_IT_H:
-        if grid.charge_it_h[-1] > LARGEST_EXPONENT * width > 0.0:
-            continue  # next to so long a charge this width is a step
-        answers = step
-        if width:
-            decay = np.exp(-grid.charge_it_h / width)
-            dying = _lag(grid.power_w * decay, keep, 0.0)
-            scale = np.exp(grid.charge_it_h[beginnings] / width)[:, None]
-            answers = step - np.where(after, scale * (dying[None, :] - faded * dying[beginnings][:, None]), 0.0)
-        # Take the constant terms out of the answers: what is left decides.
-        free = answers - (answers @ base) @ base.T
-        along, size = free @ left, np.einsum("ij,ij->i", free, free)
-        usable = (along > 0.0) & (size > TINY * n)
-        gain = np.where(usable, along**2 / np.where(usable, size, 1.0), 0.0)
-        k = int(np.argmax(gain))
-        if gain[k] > best_gain:
-            best_gain, best_change = float(gain[k]), float(along[k] / size[k])
-            best_shape, best_at = (int(beginnings[k]), width), answers[k]
-    design = np.column_stack((np.ones(n), heated, keep**index))
-    before = float(np.linalg.lstsq(design, rise - best_change * best_at, rcond=None)[0][1])
-    gone = np.maximum(grid.charge_it_h - grid.charge_it_h[best_shape[0]], 0.0)
-    reached = 1.0 - np.exp(-gone / best_shape[1]) if best_shape[1] else (index > best_shape[0]).astype(np.float64)
+    # What each shape would do to the temperature, less what the constant terms could do: that decides.
+    answers = lagging @ (grid.power_w[:, None] * shapes)
+    free = answers - base @ (base.T @ answers)
+    along, size = left @ free, np.einsum("ij,ij->j", free, free)
+    usable = (along > 0.0) & (size > TINY * n)
+    gain = np.where(usable, along**2 / np.where(usable, size, 1.0), 0.0)
+    k = int(np.argmax(gain))
+    change = float(along[k] / size[k]) if usable[k] else 0.0
+    before = float(np.linalg.lstsq(design, rise - change * answers[:, k], rcond=None)[0][1])
     heat = Heat(
         time_ms=grid.time_ms,
-        k_per_w=before + best_change * reached,
+        k_per_w=before + change * shapes[:, k],
         before_k_per_w=before,
-        limit_k_per_w=before + best_change,
+        limit_k_per_w=before + change,
         possible_k=float(heated.max()),
-        rise_k=best_change * float(best_at.max()),
+        rise_k=change * float(answers[:, k].max()),
         lag_s=lag_s,
-        explained=best_gain / flat if flat > 0.0 else 0.0,
+        explained=float(gain[k]) / flat if flat > 0.0 else 0.0,
     )
-    return max(flat - best_gain, 0.0), heat
+    return max(flat - float(gain[k]), 0.0), heat
 
 
 def _grid(curve: Curve, pack: PackSpec) -> _Grid | None:
@@ -171,14 +166,3 @@ def _grid(curve: Curve, pack: PackSpec) -> _Grid | None:
         power_w=means(power),
         charge_it_h=means(curve.charge_ah) / pack.rated_capacity_ah,
     )
-
-
-def _lag(values: Floats, keep: float, start: float) -> Floats:
-    """First-order lag: ``y[k] = keep * y[k-1] + (1 - keep) * x[k]``."""
-    out = np.empty_like(values)
-    state = start
-    gain = 1.0 - keep
-    for k, value in enumerate(values.tolist()):
-        state = keep * state + gain * value
-        out[k] = state
-    return out

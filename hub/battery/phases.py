@@ -18,7 +18,7 @@ Kind = Literal["charge", "discharge", "rest"]
 KINDS: dict[int, Kind] = {1: "charge", 0: "rest", -1: "discharge"}
 States = npt.NDArray[np.int8]
 
-# A hundredth of It is the weakest current worth a name: a fifth of the usual trickle range (dossier 2.2).
+# A hundredth of It is the weakest current worth a name: a fifth of a maker's trickle range of 0.05 to 0.1C.
 ENTER_IT = 0.01
 LEAVE_IT = 0.005
 OFFSETS = 3.0

@@ -26,7 +26,7 @@ MINUTE_S: Final = 60.0
 # More ends of connections a minute than a bad network has: another hub uses the same name.
 RIVAL_ENDS: Final = 3
 # A thread that has taken no turn for so long hangs.
-HANGS_S: Final = 30.0
+HANGS_S: Final = 60.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -151,7 +151,7 @@ class Link:
     def state(self) -> LinkState:
         """How the link is now."""
         connection = self._connection
-        ready = connection is not None and connection.ready
+        ready = connection is not None and self._ready_in == connection.generation
         ends = self._ends_last_minute()
         return LinkState(
             connected=ready,
@@ -220,10 +220,10 @@ class Link:
         read = self._reading and not self._tray.full
         connection.turn(TURN_S if read else PAUSED_TURN_S, read=read)
         if connection.ready and self._ready_in != connection.generation:
-            self._ready_in = connection.generation
             self._made += 1
             self._since_ms = self._now_ms()
             self._trouble = ""
+            self._ready_in = connection.generation
         if self._renew:
             reason, self._renew = self._renew, ""
             raise BrokerError(reason)
@@ -259,7 +259,7 @@ class Link:
         end = time.monotonic() + FLUSH_S
         with suppress(ConnectionLostError):
             self._send(connection)
-            while (connection.wants_write or self._outgoing) and time.monotonic() < end:
+            while (connection.wants_write or (self._outgoing and connection.ready)) and time.monotonic() < end:
                 connection.turn(PAUSED_TURN_S, read=False)
                 self._send(connection)
 
@@ -294,8 +294,8 @@ class Link:
             )
         if ends > RIVAL_ENDS:
             found.append(
-                f"The connection was ended {ends} times in the last minute. Another program uses the client name "
-                f"“{self._access.client_id}”: give each hub its own broker.client_id."
+                f"The connection was ended {ends} times in the last minute. Most often that is another program with "
+                f"the client name “{self._access.client_id}”: give each hub its own broker.client_id."
             )
         if self._dropped:
             found.append(

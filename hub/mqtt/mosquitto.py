@@ -1,5 +1,6 @@
 """Mosquitto as a child of the hub: started with files of our own, watched, started again, and never left behind."""
 
+import errno
 import os
 import shutil
 import signal
@@ -11,27 +12,30 @@ import time
 from pathlib import Path
 from typing import Final
 
-from hub.errors import BrokerError, StoreError
+from hub.errors import BrokerError, PackfoldError
 from hub.mqtt import mosquitto_config as config
-from hub.mqtt import tether
+from hub.mqtt import rights, tether
 from hub.mqtt.access import Access
 from hub.mqtt.bounded_log import BoundedLog
 from hub.mqtt.logins import Logins, folder, leave_for_selfcheck
-from hub.mqtt.rights import HUB_USER, LOOK_S
+from hub.mqtt.rights import HUB_USER
 from hub.settings import Broker
 
 PLACES: Final = ("/usr/sbin", "/usr/local/sbin", "/sbin", "/opt/homebrew/sbin")
 
 # A broker of a hub that was killed saves what it holds before it gives the port back.
 PORT_PATIENCE_S: Final = 5.0
-START_LIMIT_S: Final = 20.0
-STOP_LIMIT_S: Final = 10.0
+# Reading and writing what it holds takes its time on a slow card.
+START_LIMIT_S: Final = 60.0
+STOP_LIMIT_S: Final = 30.0
 TURN_S: Final = 0.1
 FIRST_WAIT_S: Final = 0.5
 LONGEST_WAIT_S: Final = 30.0
 # A child that ran this long was sound; the next failure begins with the short wait again.
 SOUND_S: Final = 60.0
 STORES_KEPT: Final = 3
+CRASHED: Final = "it crashed"
+_CRASHES: Final = {-signal.SIGSEGV, -signal.SIGBUS, -signal.SIGABRT}
 # How long it is told that the broker lost what it had stored.
 NOTE_S: Final = 24 * 3600.0
 
@@ -65,7 +69,7 @@ class Mosquitto:
         self._thread = threading.Thread(target=self._run, name="broker", daemon=True)
         self._settled = threading.Event()
         self._stopping = threading.Event()
-        self._failure: BrokerError | None = None
+        self._failure: PackfoldError | None = None
         self._trouble = ""
         self._credentials_trouble = ""
         self._note = ""
@@ -106,6 +110,8 @@ class Mosquitto:
 
     def poll(self) -> str:
         """What is wrong with it now; empty when nothing is."""
+        if self._settled.is_set() and not self._thread.is_alive() and not self._stopping.is_set():
+            return "The broker has ended. Start the hub again."
         note = self._note if time.monotonic() < self._note_until else ""
         return self._trouble or self._credentials_trouble or note
 
@@ -121,10 +127,10 @@ class Mosquitto:
         try:
             try:
                 self._begin()
-            except BrokerError as error:
+            except PackfoldError as error:
                 self._failure = error
                 return
-            except OSError as error:
+            except Exception as error:  # noqa: BLE001 - ``start`` must not take it for a success
                 self._failure = BrokerError(f"Mosquitto cannot be started: {error}. See to the data folder's rights.")
                 return
             finally:
@@ -173,7 +179,8 @@ class Mosquitto:
         while time.monotonic() < deadline and not self._stopping.is_set():
             if child.poll() is not None:
                 self._reader.join(1)
-                return "\n".join(self._log.last_lines()) or f"exit code {child.returncode}"
+                said = "\n".join(self._log.last_lines())
+                return f"{said}\n{CRASHED}" if child.returncode in _CRASHES else said or f"exit code {child.returncode}"
             if _takes_connections(self.access.host, self.access.port):
                 return None
             time.sleep(0.02)
@@ -187,22 +194,23 @@ class Mosquitto:
             child = self._child
             if child is not None and child.poll() is None:
                 self._trouble = ""
-                if now - looked >= LOOK_S:
+                if now - looked >= rights.LOOK_S:
                     looked = now
                     self._follow_credentials(child)
                 continue
+            if not self._trouble:
+                code = "" if child is None else f" (exit code {child.returncode})"
+                self._trouble = f"The broker stopped{code} and is started again. If it goes on, see {self._log_place}."
             if now - started > SOUND_S:
                 wait = FIRST_WAIT_S
-            code = "" if child is None else f" (exit code {child.returncode})"
-            self._trouble = f"The broker stopped{code} and is started again. If it goes on, see {self._log_place}."
             if self._stopping.wait(wait):
                 return
             wait = min(2 * wait, LONGEST_WAIT_S)
             started = time.monotonic()
             try:
                 self._start_child()
-            except (BrokerError, OSError) as error:
-                self._trouble = str(error)
+            except Exception as error:  # noqa: BLE001 - whatever it is, the next attempt may do
+                self._trouble = f"The broker cannot be started again: {error}"
 
     def _follow_credentials(self, child: subprocess.Popen[bytes]) -> None:
         try:
@@ -210,7 +218,7 @@ class Mosquitto:
                 config.write_passwords(self._folder, self._logins.read())
                 child.send_signal(signal.SIGHUP)
             self._credentials_trouble = ""
-        except (StoreError, OSError) as error:
+        except Exception as error:  # noqa: BLE001 - the broker goes on with the credentials it knows
             self._credentials_trouble = f"A change of credentials cannot be passed on to the broker yet: {error}"
 
     def _end(self) -> None:
@@ -237,7 +245,7 @@ class Mosquitto:
         return self._data / "broker" / "broker.log"
 
     def _is_about_the_store(self, said: str) -> bool:
-        return "database" in said and (self._folder / config.STORE).exists()
+        return ("database" in said or CRASHED in said) and (self._folder / config.STORE).exists()
 
     def _move_store_aside(self) -> None:
         store = self._folder / config.STORE
@@ -280,13 +288,10 @@ def check_port(listen: str, port: int, give_up: threading.Event, patience_s: flo
         except PermissionError:
             raise BrokerError(f"The hub may not listen on port {port}. Choose a broker.port above 1023.") from None
         except OSError as error:
-            if isinstance(error, socket.gaierror) or error.errno in _NOT_OURS:
+            if isinstance(error, socket.gaierror) or error.errno == errno.EADDRNOTAVAIL:
                 raise BrokerError(_foreign(listen)) from None
             if time.monotonic() >= deadline or give_up.wait(0.1):
                 raise BrokerError(_taken(f"port {port} on {listen}")) from None
-
-
-_NOT_OURS: Final = {99, 49}  # EADDRNOTAVAIL of Linux and of the BSDs
 
 
 def _bind_once(listen: str, port: int) -> int:

@@ -7,7 +7,7 @@ from typing import Final, NamedTuple
 
 BATCH: Final = 500
 # Decoded, a message takes several times its bytes.
-BATCH_BYTES: Final = 8 * 1024 * 1024
+BATCH_BYTES: Final = 2 * 1024 * 1024
 MOST_LETTERS: Final = 10_000
 MOST_BYTES: Final = 64 * 1024 * 1024
 
@@ -67,10 +67,10 @@ class Tray:
         self._bytes_in += len(letter.payload)
         letters = self._letters
         letters.append(letter)
-        if len(letters) >= BATCH:
-            self._many.set()
-        elif not self._some.is_set():
+        if not self._some.is_set():
             self._some.set()
+        if len(letters) >= BATCH and not self._many.is_set():
+            self._many.set()
 
     @property
     def full(self) -> bool:

@@ -23,7 +23,7 @@ from amqtt.errors import AMQTTError
 from amqtt.plugins.base import BaseAuthPlugin, BaseTopicPlugin
 from amqtt.session import Session
 
-from hub.errors import BrokerError, StoreError
+from hub.errors import BrokerError
 from hub.mqtt import rights
 from hub.mqtt.access import Access
 from hub.mqtt.credentials import verify
@@ -183,7 +183,8 @@ class TrialBroker:
         # The library logs refused logins and slow clients with their stack; the hub says what matters in its own words.
         for name in ("amqtt", "transitions"):
             logger = logging.getLogger(name)
-            logger.addHandler(logging.NullHandler())
+            if not logger.handlers:
+                logger.addHandler(logging.NullHandler())
             logger.propagate = False
         try:
             asyncio.run(self._serve())
@@ -247,7 +248,7 @@ class TrialBroker:
             if await asyncio.to_thread(self._logins.changed):
                 self._gate.logins = await asyncio.to_thread(self._logins.read)
             self._state.trouble = ""
-        except StoreError as error:
+        except Exception as error:  # noqa: BLE001 - the broker goes on with the credentials it knows
             self._state.trouble = f"A change of credentials cannot be passed on to the broker yet: {error}"
 
     def _note_exception(self, _loop: asyncio.AbstractEventLoop, context: dict[str, Any]) -> None:

@@ -153,16 +153,14 @@ def _undo_day(connection: Connection, this: Import, day: int, freed: set[tuple[i
 def _withdraw(opened: OpenedDay, time_ms: int, import_id: int) -> list[str]:
     """Take an import's values out of one reading; the quantities that are free now."""
     row = opened.rows[time_ms]
-    fills = {name: opened.fills.get((time_ms, name)) for name in opened.values(time_ms)}
-    if row["import_id"] == import_id:
-        gone = [name for name, filler in fills.items() if filler is None or filler == import_id]
-        heirs = {filler for filler in fills.values() if filler is not None and filler != import_id}
-        row["import_id"] = min(heirs, default=None)
-    else:
-        gone = [name for name, filler in fills.items() if filler == import_id]
-    for name, filler in fills.items():
-        if filler is not None and filler in {import_id, row["import_id"]}:
-            del opened.fills[(time_ms, name)]
+    # Of a reading that an import brought, it vouches for every value that is not listed as another's.
+    own = row["import_id"] == import_id
+    fillers = {name: opened.fills.get((time_ms, name)) for name in opened.values(time_ms)}
+    gone = [name for name, filler in fillers.items() if filler == import_id or (own and filler is None)]
+    if own:
+        row["import_id"] = None
+    for name in gone:
+        opened.fills.pop((time_ms, name), None)
     row |= dict.fromkeys(gone)
     if not opened.values(time_ms):
         del opened.rows[time_ms]

@@ -10,6 +10,10 @@ from hub.store import aside, readings, receipts
 from hub.store import tables as t
 from hub.telemetry.message import Message, Remark
 
+# A node that makes up names must not fill the card: so many are counted each, the rest together.
+NAMES_KEPT = 200
+OTHER_NAMES = "(others)"
+
 
 @dataclass(slots=True)
 class Incoming:
@@ -85,14 +89,21 @@ def _arrival(item: Incoming) -> readings.Arrival:
 
 
 def _count_unknown(connection: Connection, good: Sequence[Incoming]) -> None:
+    known: dict[int, set[str]] = {}
     counted: dict[tuple[int, str], tuple[int, int]] = {}
     for item in good:
         assert item.message is not None
-        assert item.origin.node_id is not None
-        for name, times in item.message.unknown.items():
-            key = (item.origin.node_id, aside.storable(name)[:100])
-            before = counted.get(key, (0, 0))
-            counted[key] = (before[0] + times, max(before[1], item.origin.received_ms))
+        node_id = item.origin.node_id
+        assert node_id is not None
+        for stated, times in item.message.unknown.items():
+            if node_id not in known:
+                known[node_id] = set(unknown_names(connection, node_id))
+            names, name = known[node_id], aside.storable(stated)[:100]
+            if name not in names and len(names) >= NAMES_KEPT:
+                name = OTHER_NAMES
+            names.add(name)
+            before = counted.get((node_id, name), (0, 0))
+            counted[(node_id, name)] = (before[0] + times, max(before[1], item.origin.received_ms))
     if counted:
         connection.exec_driver_sql(
             "INSERT INTO unknown_name (node_id, name, count, last_ms) VALUES (?, ?, ?, ?) "

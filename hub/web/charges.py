@@ -1,13 +1,14 @@
 """Charge sessions as a page tells them: when, how much, how they ended, how sure, and on what evidence."""
 
 import json
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
+from typing import Any
 from zoneinfo import ZoneInfo
 
 from hub.web.days import Row
-from hub.web.sentences import confidence, ending
-from hub.web.words import MINUS, NBSP, NOT_KNOWN, figure, when
+from hub.web.sentences import ending
+from hub.web.words import MINUS, NBSP, NOT_KNOWN, duration, figure, moment, when
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,7 +34,6 @@ class Session:
     tick_ms: int | None
     full: bool
     how: str
-    sure: str
     words: str
     figures: tuple[tuple[str, str], ...]
     evidence: tuple[tuple[str, str], ...]
@@ -45,11 +45,10 @@ def sessions(rows: Iterable[Row], zone: ZoneInfo) -> list[Session]:
 
 
 def _session(number_: int, row: Row, zone: ZoneInfo) -> Session:
-    how = ending(row["ended_by"], row["end_ms"], row["full_at_ms"])
-    sure = confidence(row["confidence"]) if row["end_ms"] is not None or row["full_at_ms"] is not None else ""
+    how = ending(row["ended_by"], row["end_ms"], row["full_at_ms"], row["confidence"])
     full = row["full_at_ms"] is not None
     tick_ms = row["full_at_ms"] if full else row["end_ms"]
-    at = f"{when(tick_ms, zone)}: " if tick_ms is not None else ""
+    at = f", {when(tick_ms, zone)}" if tick_ms is not None else ""
     return Session(
         number_,
         row["pack"],
@@ -58,8 +57,7 @@ def _session(number_: int, row: Row, zone: ZoneInfo) -> Session:
         tick_ms,
         full,
         how,
-        sure,
-        f"Charge {number_}, {at}{how}{f', {sure}' if sure else ''}",
+        f"Charge {number_}{at}. {how}.",
         (
             ("Charge into the pack", figure(row["charge_ah"], "Ah", 2)),
             ("Energy into the pack", figure(row["charge_wh"], "Wh", 1)),
@@ -68,9 +66,12 @@ def _session(number_: int, row: Row, zone: ZoneInfo) -> Session:
             ("Full at", when(row["full_at_ms"], zone) if full else "was not full"),
             ("Charge after full", figure(row["overcharge_ah"], "Ah", 2) if full else "none: it was not full"),
         ),
-        tuple(evidence(row["evidence"])),
+        tuple(evidence(row["evidence"], zone)),
     )
 
+
+SECONDS_READABLE = 120
+PLAIN_BELOW = 1e9
 
 # Suffixes of the names in figures and evidence, with the unit they stand for.
 UNITS = {
@@ -90,19 +91,48 @@ UNITS = {
 }
 
 
-def evidence(text: str) -> Iterable[tuple[str, str]]:
+# What the rules of the end of charge look at, in words.
+RULES = {
+    "charge-held": "Charge it took",
+    "charge-returned": "Charge returned since it was last full",
+    "charger-cut": "Current after the charger's cut",
+    "heating": "Charging power that became heat",
+    "overcharge": "Charge after full",
+    "temperature-limit": "Temperature at the end",
+    "temperature-slope": "Warming",
+    "timer": "Duration",
+    "voltage-drop": "Drop from the highest voltage",
+    "voltage-level": "Highest voltage",
+    "voltage-plateau": "Charge during which the voltage stood still",
+}
+
+
+def evidence(text: str, zone: ZoneInfo) -> Iterator[tuple[str, str]]:
     """What a method noted, as name and words; whatever its form, nothing of it is lost."""
     try:
         content = json.loads(text) if text else {}
     except ValueError:
-        yield "noted", text
+        yield "Noted", text
         return
     if isinstance(content, Mapping):
         for name, value in content.items():
             words, unit = _name(str(name))
-            yield words, _value(value, unit)
+            sign = isinstance(value, Mapping) and value.keys() >= {"value", "limit", "met", "unit"}
+            yield (RULES.get(name, words), _sign(value, zone)) if sign else (words, _value(value, unit))
     elif content:
-        yield "noted", _value(content, "")
+        yield "Noted", _value(content, "")
+
+
+def _sign(sign: Mapping[str, Any], zone: ZoneInfo) -> str:
+    """One rule's finding: what it measured, its limit, whether and when that was met, and what that speaks for."""
+    unit = str(sign["unit"] or "").replace("per cell", "a cell")
+    at_ms, weight = sign.get("at_ms"), sign.get("weight") or 0
+    at = f" at {moment(at_ms, zone).clock}{NBSP}{moment(at_ms, zone).zone}" if sign["met"] and at_ms is not None else ""
+    met = "met" if sign["met"] else "not met"
+    parts = [_value(sign["value"], unit), f"limit {_value(sign['limit'], unit)}", f"{met}{at}"]
+    if weight:
+        parts.append(f"speaks {'for' if weight > 0 else 'against'} a full pack")
+    return "; ".join(parts)
 
 
 def _name(name: str) -> tuple[str, str]:
@@ -123,6 +153,15 @@ def _value(value: object, unit: str) -> str:
     if isinstance(value, bool) or value is None:
         return {None: NOT_KNOWN, True: "yes", False: "no"}[value]
     if isinstance(value, int | float):
-        text = f"{value:.4g}" if isinstance(value, float) else str(value)
-        return f"{text.replace('-', MINUS)}{f'{NBSP}{unit}' if unit else ''}"
+        return _number(value, unit)
     return str(value)
+
+
+def _number(value: float, unit: str) -> str:
+    """Four figures, enough to compare a finding with its limit; long times in minutes and hours."""
+    if unit == "s" and value >= SECONDS_READABLE:
+        return duration(1000 * value)
+    text = f"{value:.4g}" if isinstance(value, float) else str(value)
+    if "e+" in text and abs(value) < PLAIN_BELOW:
+        text = f"{value:.0f}"
+    return f"{text.replace('-', MINUS)}{f'{NBSP}{unit}' if unit else ''}"

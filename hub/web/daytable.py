@@ -75,14 +75,14 @@ class Table:
         return letter
 
 
-def table(days: Iterable[Row], node: Node, zone: ZoneInfo) -> Table:
+def table(days: Iterable[Row], node: Node, zone: ZoneInfo, now_ms: int) -> Table:
     """Day figures, oldest first, as a table, newest first."""
     found = Table()
     for day in reversed(list(days)):
         cells = [
             Cell("Pack", day["pack"] or "none fitted"),
             Cell("Seen, %", number(100 * day["coverage"])),
-            _full(found, day, zone),
+            _full(found, day, zone, now_ms),
         ]
         cells += [_cell(found, column, day, node) for column in COLUMNS]
         found.rows.append(DayRow(day["date"], tuple(cells)))
@@ -94,12 +94,14 @@ def headings() -> Sequence[str]:
     return ("Pack", "Seen, %", "Full", *(column.heading for column in COLUMNS))
 
 
-def _full(found: Table, day: Row, zone: ZoneInfo) -> Cell:
+def _full(found: Table, day: Row, zone: ZoneInfo, now_ms: int) -> Cell:
     if day["full_at_ms"] is not None:
         at = moment(day["full_at_ms"], zone)
         return Cell("Full", f"{at.clock}{NBSP}{at.zone}")
     if day["pack"] is None:
         return Cell("Full", NOT_KNOWN, found.note(NO_PACK))
+    if day["end_ms"] > now_ms:
+        return Cell("Full", "not yet")
     if day["coverage"] < SEEN_ENOUGH:
         return Cell("Full", NOT_KNOWN, found.note("Too little of the day was seen to say that the pack did not fill."))
     return Cell("Full", "did not fill")

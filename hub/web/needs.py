@@ -175,13 +175,19 @@ REASONS = {
 }
 
 
+# How often in a week before it is a fault: a thermometer that starts up says one wrong value, a load that switches may
+# reach the end of a range (common practice, no source).
+OFTEN = {"power-on": 12, "saturated": 12, "spike": 6, "disconnected": 3, "out-of-range": 3, "frozen": 1}
+
+
 def _sensors(glance: Glance, _now_ms: int) -> Need | None:
-    if not glance.findings:
+    often = {key: times for key, times in glance.findings.items() if times >= OFTEN.get(key[1], 1)}
+    if not often:
         return None
     parts = [
         f"{BY_NAME[quantity].label.lower() if quantity in BY_NAME else quantity}: {count(times, 'value')}, "
         f"{REASONS.get(reason, reason)}"
-        for (quantity, reason), times in sorted(glance.findings.items())
+        for (quantity, reason), times in sorted(often.items())
     ]
     return Need(
         6,

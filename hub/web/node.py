@@ -1,6 +1,7 @@
 """A node's page: today, the stretch asked for, its charges, its harvest, its link, and what was set aside."""
 
 import datetime as dt
+from collections.abc import Iterable
 from dataclasses import dataclass
 from typing import Any
 
@@ -10,7 +11,7 @@ from hub.errors import InventoryError
 from hub.store import aside, figures, intake, inventory, measured, readings, receipts
 from hub.web import dayplot
 from hub.web.charges import sessions
-from hub.web.days import local_date
+from hub.web.days import Row, local_date
 from hub.web.daytable import headings, table
 from hub.web.desk import desk
 from hub.web.gathering import Subject, glance_of, per_cell, subject, traces_of
@@ -112,11 +113,33 @@ def _stretch(who: Subject, within: Range) -> dict[str, Any]:
         "plot_table": tabulate(traces, within, who.zone),
         "sessions": listed[::-1],
         "numbered": dayplot.numbered(listed),
-        "days": table(days[-DAYS_SHOWN:], who.node, who.zone),
+        "days": table(days[-DAYS_SHOWN:], who.node, who.zone, here.clock()),
         "days_left_out": max(0, len(days) - DAYS_SHOWN),
         "harvest_bars": bars(harvest) if len(harvest) > 1 else "",
-        "findings": findings,
+        "findings": _together(findings),
     }
+
+
+@dataclass(slots=True)
+class Kept:
+    """Values of one quantity that were kept out of the figures for one reason."""
+
+    quantity: str
+    reason: str
+    times: int
+    first_ms: int
+    last_ms: int
+
+
+def _together(findings: Iterable[Row]) -> list[Kept]:
+    """Findings of a stretch, those of its days put together."""
+    found: dict[tuple[str, str], Kept] = {}
+    for row in findings:
+        key = (row["quantity"], row["reason"])
+        kept = found.setdefault(key, Kept(*key, 0, row["first_ms"], row["last_ms"]))
+        kept.times += row["count"]
+        kept.first_ms, kept.last_ms = min(kept.first_ms, row["first_ms"]), max(kept.last_ms, row["last_ms"])
+    return [found[key] for key in sorted(found)]
 
 
 def _traces(who: Subject, within: Range) -> dict[str, Binned]:

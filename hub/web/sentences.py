@@ -59,7 +59,7 @@ def today_so_far(day: Row | None) -> str:
         offered = f", where a clear sky offers {figure(sky, 'Wh', 0)} in the whole day" if sky is not None else ""
         parts.append(f"{figure(day['panel_wh'], 'Wh', 1)} from the panel{offered}")
     told = f": {listed(parts)}" if parts else ": no figure is known"
-    return f"Today so far{told}. Readings cover {percent(day['coverage'])} of the day."
+    return f"Today so far{told}. Readings cover {percent(day['coverage'])} of the day so far."
 
 
 def filled(days: Sequence[Day], today: Day | None, zone: ZoneInfo) -> str:
@@ -137,40 +137,33 @@ def level(last_full_ms: int | None, now_ms: int, *, has_pack: bool) -> str:
 
 
 ENDED_BY = {
-    "voltage-drop": "full: the voltage dipped from its peak",
-    "voltage-plateau": "full: the voltage stopped rising",
-    "temperature-slope": "full: the pack began to warm",
-    "temperature-limit": "stopped at the temperature limit",
-    "charger-cut": "the charger stopped while there was still sun",
-    "timer": "the charger's timer ran out",
-    "sun-ended": "the sun went first",
+    "voltage-drop": "ended as the voltage dipped from its peak",
+    "voltage-plateau": "ended as the voltage stopped rising",
+    "temperature-slope": "ended as the pack began to warm",
+    "temperature-limit": "ended at the temperature limit",
+    "charger-cut": "ended by the charger while there was still sun",
+    "timer": "ended by the charger's timer",
+    "sun-ended": "ended when the sun went",
     "unknown": "how it ended is not known",
 }
 
 
-def ending(ended_by: str | None, end_ms: int | None, full_at_ms: int | None) -> str:
-    """How a charge session ended."""
+def ending(ended_by: str | None, end_ms: int | None, full_at_ms: int | None, sure: float | None) -> str:
+    """Whether a charge session filled the pack, how sure that is, and how it ended."""
+    full = full_at_ms is not None
     if end_ms is None:
-        return "still charging" if full_at_ms is None else "full, and charging goes on"
-    words = ENDED_BY.get(ended_by or "unknown", ENDED_BY["unknown"])
-    if full_at_ms is None or words.startswith("full"):
-        return words
-    return f"full; {words}"
+        return f"Full, {confidence(sure)}; charging goes on" if full else "Still charging"
+    cause = ENDED_BY.get(ended_by or "unknown", ENDED_BY["unknown"])
+    return f"{'Full' if full else 'Not full'}, {confidence(sure)}; {cause}"
 
 
-# Common practice, no source: words for a confidence between 0 and 1.
-CONFIDENCE = (
-    (0.95, "sure"),
-    (0.8, "quite sure"),
-    (0.6, "likely"),
-    (0.4, "doubtful"),
-    (0.0, "hardly more than a guess"),
-)
+# Common practice, no source: words for how sure a method is, where 0.5 is a toss of a coin.
+CONFIDENCE = ((0.95, "sure"), (0.8, "quite sure"), (0.65, "likely"))
 
 
 def confidence(value: float | None) -> str:
-    """A confidence between 0 and 1 in words, with the number."""
+    """How sure a method is in words, with the number."""
     if value is None:
         return "how sure is not known"
-    words = next((text for least, text in CONFIDENCE if value >= least), CONFIDENCE[-1][1])
+    words = next((text for least, text in CONFIDENCE if value >= least), "doubtful")
     return f"{words} ({value:.2f})"

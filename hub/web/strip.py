@@ -9,7 +9,7 @@ from hub.web.axis import axis
 from hub.web.chart import EDGE, EVENTS, Chart, Lane, Pen, Tick, draw
 from hub.web.glance import End, Glance
 from hub.web.reduction import Binned
-from hub.web.sentences import confidence, ending
+from hub.web.sentences import ending
 from hub.web.words import figure, when
 
 # One scale for all strips, so that they can be compared; wider only where a trace needs it.
@@ -94,8 +94,8 @@ def ticks(ends: Sequence[End], glance: Glance, now_ms: int) -> list[Tick]:
     return [
         Tick(
             end.time_ms,
-            f"{when(end.time_ms, glance.zone, now_ms)}: "
-            f"{ending(end.ended_by, end.time_ms, end.time_ms if end.full else None)}, {confidence(end.confidence)}",
+            f"{when(end.time_ms, glance.zone, now_ms)}. "
+            f"{ending(end.ended_by, end.time_ms, end.time_ms if end.full else None, end.confidence)}.",
             end.full,
         )
         for end in ends

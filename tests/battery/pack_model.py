@@ -2,7 +2,7 @@
 
 The cell is the common textbook picture of a sealed nickel-metal-hydride cell under charge:
 
-* open-circuit voltage against level, from the dossier's table of rested cells (20 °C), with the charge branch lying
+* open-circuit voltage against level, as commonly given for rested cells at 20 °C (from memory), with the charge branch lying
   20..60 mV higher (hysteresis);
 * an ohmic part, and one slow part with a time constant of minutes (so that a step of current is followed by a creep);
 * charging current splits into current that stores charge and current that makes oxygen. The share that is stored falls

@@ -97,7 +97,7 @@ def test_the_charge_after_full_is_the_models():
 
 
 def test_a_small_trickle_on_a_cool_full_pack_is_not_flagged():
-    # A maker of sealed cells allows a tenth of the capacity a day into a full pack (dossier, 2.2).
+    # VARTA Microbattery's handbook allows a tenth of the capacity a day into a full pack (intermittent trickle charge).
     site = pm.Site(panel_a=2.0 / 40.0, air_mean_c=18.0, load_a=0.012)
     run = pm.simulate(site=site, days=3, level=0.97)
     result = days(run.series, a_node(), a_pack(), 3)

@@ -11,7 +11,7 @@ def test_the_48_cycles_of_the_endurance_test_are_28_full_ones():
 
 
 def test_five_days_down_to_60_percent_are_two_full_cycles():
-    # Worked in the dossier, section 4.3: 5 * 40 % = 2.00.
+    # Worked by hand: 5 * 40 % = 2.00.
     rows = throughput([(f"2026-06-0{d}", 0.4 * 2.4) for d in range(1, 6)], 2.4)
     assert [row.equivalent_full_cycles for row in rows] == pytest.approx([0.4, 0.8, 1.2, 1.6, 2.0])
 

@@ -8,7 +8,9 @@ from hub.jobs.compute import subject_of
 from hub.jobs.windows import windows
 from hub.store import inventory
 
-PANEL = BARE.replace("interval_s = 300", "interval_s = 300\npanel_power_w = 20\npanel_tilt_deg = 40\npanel_azimuth_deg = 180")
+PANEL = BARE.replace(
+    "interval_s = 300", "interval_s = 300\npanel_power_w = 20\npanel_tilt_deg = 40\npanel_azimuth_deg = 180"
+)
 
 
 @pytest.fixture

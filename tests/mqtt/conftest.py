@@ -1,15 +1,25 @@
 """Brokers on loopback, nodes at them, and collectors that are stopped after the test."""
 
+import shutil
 from collections.abc import Callable, Iterator
+from pathlib import Path
 
 import pytest
+from conftest import EXAMPLE
 from mqtt.nodes import SECRET, NodeClient, OpenBroker, need_mosquitto, now_ms, settings_for, wait_for
 
+from hub.mqtt import rights
 from hub.mqtt.broker import start_broker
 from hub.mqtt.collector import Collector
 from hub.mqtt.credentials import hash_secret
-from hub.store import inventory as store_inventory
-from hub.store import people
+from hub.store import inventory, inventory_change, inventory_file, people
+from hub.store.engine import DATABASE_NAME, Database
+
+
+@pytest.fixture(autouse=True)
+def _look_often(monkeypatch):
+    """Credentials are looked at ten times as often as they need be."""
+    monkeypatch.setattr(rights, "LOOK_S", 0.1)
 
 
 @pytest.fixture
@@ -26,14 +36,30 @@ def node() -> Iterator[Callable[..., NodeClient]]:
         client.close()
 
 
-@pytest.fixture
-def enrolled(database, inventory):
-    """The database with the example's nodes, each with a credential."""
+@pytest.fixture(scope="session")
+def enrolled_file(tmp_path_factory: pytest.TempPathFactory, migrated_file: Path) -> Path:
+    """A database with the example's nodes, each with a credential: to be copied, not opened."""
+    data = tmp_path_factory.mktemp("enrolled")
+    shutil.copy(migrated_file, data / DATABASE_NAME)
+    database = Database(data, checkpoints=True)
+    rows = inventory_file.parse(EXAMPLE, "example")
     with database.write() as connection:
-        for name, node_id in store_inventory.node_ids(connection).items():
-            del name
+        inventory_change.apply(connection, rows, who="test", now_ms=0)
+        for node_id in inventory.node_ids(connection).values():
             people.put_credential(connection, node_id, hash_secret(SECRET), 0)
-    return database
+    database.close()
+    return database.file
+
+
+@pytest.fixture
+def enrolled(tmp_path: Path, enrolled_file: Path) -> Iterator[Database]:
+    """Such a database in a data folder of its own."""
+    data = tmp_path / "data"
+    data.mkdir()
+    shutil.copy(enrolled_file, data / DATABASE_NAME)
+    found = Database(data, checkpoints=True)
+    yield found
+    found.close()
 
 
 @pytest.fixture(params=[pytest.param("mosquitto", marks=pytest.mark.broker), "trial"])

@@ -111,7 +111,7 @@ class NodeClient:
 
     def vanish(self) -> None:
         """Be gone without a word, as when the power fails."""
-        self._client.socket().close()
+        self._client.socket().shutdown(socket.SHUT_RDWR)
 
     def close(self) -> None:
         self._client.disconnect()

@@ -125,7 +125,7 @@ def test_a_database_that_is_locked_for_a_while_loses_nothing(either, collecting,
     blocker.execute("BEGIN IMMEDIATE")
     for sequence in range(1, 101):
         east.publish(pack(sequence))
-    time.sleep(1)
+    time.sleep(0.5)
     assert collector.status().connected
     assert collector.status().stored == 0
     assert east.receipts() == []

@@ -14,7 +14,7 @@ import pytest
 from mqtt.nodes import SECRET, need_mosquitto, settings_for, wait_for
 from msgspec.structs import replace
 
-from hub.errors import BrokerError
+from hub.errors import BrokerError, StoreError
 from hub.mqtt import mosquitto as module
 from hub.mqtt.credentials import hash_secret
 from hub.mqtt.logins import Logins
@@ -159,6 +159,45 @@ def test_a_program_that_never_listens_is_given_up(made, stand_in, monkeypatch):
     assert broker.pid is None
 
 
+def test_a_store_on_which_it_crashes_is_kept_aside(made, stand_in):
+    broker = made()
+    broker._folder.mkdir()
+    (broker._folder / "mosquitto.db").write_bytes(b"poison")
+    real = broker._program
+    broker._program = stand_in(f'[ -e mosquitto.db ] && kill -SEGV $$\nexec {real} "$@"')
+    broker.start()
+    assert "mosquitto.db.unreadable-" in broker.sentence
+
+
+def test_a_database_that_cannot_be_read_is_no_start(made, monkeypatch):
+    broker = made()
+
+    def away() -> dict[str, str]:
+        raise StoreError("The database is away.")
+
+    monkeypatch.setattr(broker._logins, "read", away)
+    with pytest.raises(StoreError, match="The database is away"):
+        broker.start()
+
+
+def test_a_failure_nobody_foresaw_is_no_start_either(made, monkeypatch):
+    broker = made()
+    monkeypatch.setattr(broker._logins, "read", lambda: 1 / 0)
+    with pytest.raises(BrokerError, match=r"cannot be started: division by zero"):
+        broker.start()
+
+
+def test_a_database_that_is_away_later_is_told_and_changes_nothing(made, node, monkeypatch):
+    broker = made()
+    broker.start()
+    changed = broker._logins.changed
+    monkeypatch.setattr(broker._logins, "changed", lambda: 1 / 0)
+    wait_for(lambda: "A change of credentials cannot be passed on" in broker.poll())
+    assert node(broker.port, "ridge-east").admitted
+    monkeypatch.setattr(broker._logins, "changed", changed)
+    wait_for(lambda: broker.poll() == "")
+
+
 def test_a_program_that_will_not_end_is_killed(made, stand_in, monkeypatch):
     monkeypatch.setattr(module, "STOP_LIMIT_S", 0.3)
     monkeypatch.setattr(module, "_takes_connections", lambda *_: True)
@@ -222,8 +261,7 @@ def test_a_child_that_cannot_be_started_again_is_told_and_tried_on(made, stand_i
     wait_for(lambda: broker.poll() == "" and answers(broker.port))
 
 
-def test_credentials_given_and_taken_away_reach_the_running_broker(made, node, enrolled, monkeypatch):
-    monkeypatch.setattr(module, "LOOK_S", 0.1)
+def test_credentials_given_and_taken_away_reach_the_running_broker(made, node, enrolled):
     broker = made()
     broker.start()
     pid = broker.pid

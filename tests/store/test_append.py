@@ -5,6 +5,7 @@ import time
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+from store.strategies import DAY, INSTANTS, Model, arrivals, as_rows, batches, seals
 
 from hub.errors import PayloadError
 from hub.quantities import NAMES
@@ -13,7 +14,6 @@ from hub.store import tables as t
 from hub.store.append import append, mark
 from hub.store.arrivals import Arrival
 from hub.store.layout import DAY_MS, HOUR_MS, fixed_point
-from store.strategies import DAY, INSTANTS, Model, arrivals, as_rows, batches, seals
 
 EVIDENCE = "SELECT received_ms, device_ms, boot, sequence, import_id FROM reading WHERE node_id = ? AND time_ms = ?"
 
@@ -157,9 +157,7 @@ def test_storing_costs_little_beside_the_bare_driver(database, inventory, messag
     for batch in range(12):
         start = DAY * DAY_MS + batch * messages * each * 1000
         arriving = [
-            Arrival(
-                1, start, {start + (m * each + i) * 1000: {name: 0.5 + i for name in eight} for i in range(each)}, 3, m
-            )
+            Arrival(1, start, {start + (m * each + i) * 1000: dict.fromkeys(eight, 0.5 + i) for i in range(each)}, 3, m)
             for m in range(messages)
         ]
         rows = [

@@ -21,6 +21,7 @@ def child(code, *arguments):
     """A Python process of its own."""
     return subprocess.Popen(
         [sys.executable, "-c", textwrap.dedent(code), *map(str, arguments)],
+        stdin=subprocess.PIPE,
         stdout=subprocess.PIPE,
         stderr=subprocess.PIPE,
         text=True,
@@ -69,10 +70,14 @@ def test_a_reader_sees_one_moment(database):
 
 
 def test_a_transaction_happens_whole_or_not_at_all(database):
-    with pytest.raises(RuntimeError), database.write() as connection:
-        connection.exec_driver_sql("CREATE TABLE extra (x)")
-        connection.exec_driver_sql("INSERT INTO fact VALUES ('a', 'b')")
-        raise RuntimeError
+    def half():
+        with database.write() as connection:
+            connection.exec_driver_sql("CREATE TABLE extra (x)")
+            connection.exec_driver_sql("INSERT INTO fact VALUES ('a', 'b')")
+            raise RuntimeError
+
+    with pytest.raises(RuntimeError):
+        half()
     with database.read() as connection:
         assert connection.exec_driver_sql("SELECT COUNT(*) FROM fact").scalar() == 0
         assert connection.exec_driver_sql("SELECT COUNT(*) FROM sqlite_master WHERE name = 'extra'").scalar() == 0
@@ -85,13 +90,18 @@ def test_a_reference_to_nothing_is_refused(database):
 
 COUNTER = """
     import sys
+    import time
     from pathlib import Path
     from hub.store import facts
     from hub.store.engine import Database
     database = Database(Path(sys.argv[1]))
+    with database.read() as connection:
+        print("ready", flush=True)
+    sys.stdin.readline()
     for _ in range(int(sys.argv[2])):
         with database.write() as connection:
             before = facts.revision(connection)
+            time.sleep(0.001)
             facts.put(connection, "revision", str(before + 1))
             facts.put(connection, f"{sys.argv[3]} {before}", "x")
     database.close()
@@ -101,6 +111,11 @@ COUNTER = """
 def test_two_processes_that_read_and_then_write_lose_nothing(database):
     """A transaction that begins without the lock fails at its first write once another process has written."""
     pair = [child(COUNTER, database.data, 60, name) for name in ("one", "two")]
+    for process in pair:
+        assert process.stdout.readline() == "ready\n"
+    for process in pair:
+        process.stdin.write("go\n")
+        process.stdin.flush()
     for process in pair:
         done(process)
     with database.read() as connection:
@@ -135,9 +150,9 @@ def test_a_busy_database_is_told_and_can_be_tried_again(monkeypatch, migrated_fi
     other = sqlite3.connect(database.file, isolation_level=None)
     other.execute("BEGIN IMMEDIATE")
     for _ in range(2):
-        with pytest.raises(StoreError, match=r"is busy with another writer. Wait a moment and try again."):
-            with database.write():
-                pass
+        waiting = database.write()
+        with pytest.raises(StoreError, match=r"is busy with another writer. Wait a moment and try again."), waiting:
+            pass
     other.execute("COMMIT")
     other.close()
     with database.write() as connection:
@@ -210,8 +225,9 @@ def test_a_folder_in_place_of_the_file(tmp_path):
 
 
 def test_a_full_disk(database):
-    with pytest.raises(StoreError, match=r"The disk with .* is full. Free some space"), database.write() as connection:
+    with database.write() as connection:
         connection.exec_driver_sql(f"PRAGMA max_page_count={pragma(connection, 'page_count') + 5}")
+    with pytest.raises(StoreError, match=r"The disk with .* is full. Free some space"), database.write() as connection:
         connection.exec_driver_sql("INSERT INTO fact VALUES ('big', zeroblob(1000000))")
 
 

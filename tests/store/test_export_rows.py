@@ -36,19 +36,19 @@ def only(connection, table, column, **chosen):
         ("readings", "time, node"),
         (
             "days",
-            "node, pack, date, coverage, panel_wh, charge_ah, discharge_ah, charge_wh, discharge_wh, load_wh, clear_sky_wh, "
-            "harvest_ratio, pack_temperature_max_c, cell_voltage_min_v, cell_voltage_max_v, full_at",
+            """node, pack, date, coverage, panel_wh, charge_ah, discharge_ah, charge_wh, discharge_wh, load_wh,
+            clear_sky_wh, harvest_ratio, pack_temperature_max_c, cell_voltage_min_v, cell_voltage_max_v, full_at""",
         ),
         (
             "charges",
-            "node, pack, start, end, charge_ah, charge_wh, mean_rate_it, peak_temperature_c, ended_by, full_at, confidence, "
-            "overcharge_ah",
+            """node, pack, start, end, charge_ah, charge_wh, mean_rate_it, peak_temperature_c, ended_by, full_at,
+            confidence, overcharge_ah""",
         ),
         ("throughput", "pack, date, discharge_ah, equivalent_full_cycles"),
     ],
 )
 def test_columns_and_their_order_are_a_promise_to_users_new_ones_are_added_at_the_end(table, promised):
-    wanted = tuple(promised.split(", ")) + (NAMES if table == "readings" else ())
+    wanted = tuple(promised.replace(",", " ").split()) + (NAMES if table == "readings" else ())
     assert TABLES[table].columns[: len(wanted)] == wanted
 
 
@@ -187,9 +187,10 @@ cursors = st.one_of(
 def test_any_cursor_leads_on_or_is_refused(scratch, table, cursor):
     with scratch() as connection:
         try:
-            list(rows(connection, table, Selection(), cursor))
+            found = list(rows(connection, table, Selection(), cursor))
         except UsageError as error:
-            assert str(error) == "The cursor cannot be read. Begin again without one."
+            found = str(error)
+    assert found in ([], "The cursor cannot be read. Begin again without one.")
 
 
 def test_a_cursor_of_another_kind_of_table_is_refused(hub):

@@ -119,7 +119,7 @@ torn line
         ("/media/my share/hub", "cifs"),
         ("/phone/x", "fuse.sshfs"),
         ("/", None),
-        ("/home/hub", None),
+        ("/opt/hub", None),
         ("/srv/local/hub", None),
         ("/srvant", None),
         ("/over/hub", None),

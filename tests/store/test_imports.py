@@ -1,6 +1,7 @@
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+from store.strategies import DAY, INSTANTS, as_rows, reading, seals, times
 
 from hub.errors import UsageError
 from hub.store import aside, imports, intake, readings
@@ -8,7 +9,6 @@ from hub.store.append import append
 from hub.store.arrivals import Arrival
 from hub.store.layout import DAY_MS
 from hub.telemetry.message import Message
-from store.strategies import DAY, INSTANTS, as_rows, reading, seals, times
 
 AT = DAY * DAY_MS
 SPAN = (INSTANTS[0], INSTANTS[-1])

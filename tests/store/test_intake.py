@@ -3,15 +3,15 @@ import json
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+from store.strategies import DAY, as_rows, reading, times
 
 from hub.errors import PayloadError
-from hub.store import aside, readings
+from hub.store import aside, intake, readings
 from hub.store.intake import Incoming, note_presence, take, unknown_names
 from hub.store.layout import DAY_MS
 from hub.store.receipts import Receipt
 from hub.telemetry import senml
 from hub.telemetry.message import Message, Remark
-from store.strategies import DAY, as_rows, reading, times
 
 AT = DAY * DAY_MS
 NODE = aside.Origin("mqtt", "field/node-1/telemetry", 1, "node-1", AT + DAY_MS)
@@ -144,6 +144,17 @@ def test_a_message_with_half_a_number_earns_no_receipt(scratch):
     with scratch() as connection:
         assert take(connection, [Incoming(NODE, b"", Message({AT: {"uptime": 1.0}}, boot=3))]).receipts == []
         assert take(connection, [Incoming(NODE, b"", Message({AT: {"uptime": 1.0}}, sequence=1))]).receipts == []
+
+
+def test_a_node_that_makes_up_names_has_the_rest_counted_together(scratch, monkeypatch):
+    monkeypatch.setattr(intake, "NAMES_KEPT", 3)
+    with scratch() as connection:
+        for _ in range(2):
+            for number in range(6):
+                take(connection, [Incoming(NODE, b"", Message({}, unknown={"name-0": 1, f"name-{number + 1}": 2}))])
+        assert unknown_names(connection, 1) == {"(others)": 16, "name-0": 12, "name-1": 4, "name-2": 4}
+        take(connection, [Incoming(NODE, b"", Message({}, unknown={f"new-{n}": 1 for n in range(9)}))])
+        assert unknown_names(connection, 1)["(others)"] == 25
 
 
 def test_presence_keeps_the_moment_of_the_change(scratch):

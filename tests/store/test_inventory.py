@@ -43,9 +43,9 @@ def test_things_are_found_by_name_or_the_known_names_are_told(inventory):
     assert inventory.node("weir-gauge").current_full_scale_a == 3.2
     assert inventory.site_of(inventory.node("weir-gauge")).timezone == "Australia/Sydney"
     assert inventory.pack("R-08").cells_in_series == 4
-    with pytest.raises(InventoryError, match="no node “mast”. Known nodes: ridge-east, ridge-west"):
+    with pytest.raises(InventoryError, match=r"no node “mast”. Known nodes: ridge-east, ridge-west"):
         inventory.node("mast")
-    with pytest.raises(InventoryError, match="no pack “R-99”. Known packs: R-07, R-08"):
+    with pytest.raises(InventoryError, match=r"no pack “R-99”. Known packs: R-07, R-08"):
         inventory.pack("R-99")
     with pytest.raises(InventoryError, match="none yet"):
         Inventory().pack("R-07")

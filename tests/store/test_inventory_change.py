@@ -1,8 +1,8 @@
 import json
 
 import pytest
-
 from conftest import EXAMPLE
+
 from hub.errors import InventoryError
 from hub.store import facts
 from hub.store import inventory as store_inventory

@@ -1,5 +1,6 @@
 import numpy as np
 import pytest
+from store.strategies import DAY
 
 from hub.series import EMPTY, Series
 from hub.store import measured
@@ -7,7 +8,6 @@ from hub.store.append import append
 from hub.store.arrivals import Arrival
 from hub.store.inventory import Calibration
 from hub.store.layout import DAY_MS
-from store.strategies import DAY
 
 AT = DAY * DAY_MS
 MINUTE = 60_000

@@ -1,10 +1,10 @@
 import pytest
+from store.strategies import DAY, as_rows
 
 from hub.store import readings
 from hub.store.append import append
 from hub.store.arrivals import Arrival
 from hub.store.layout import DAY_MS
-from store.strategies import DAY, as_rows
 
 AT = DAY * DAY_MS + 1000
 

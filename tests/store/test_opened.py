@@ -1,11 +1,11 @@
 import pytest
+from store.strategies import DAY, as_rows
 
 from hub.store import imports, readings
 from hub.store.append import append
 from hub.store.arrivals import Arrival
 from hub.store.layout import DAY_MS
 from hub.store.opened import PARAMETERS, OpenedDay, in_parts
-from store.strategies import DAY, as_rows
 
 AT = DAY * DAY_MS
 

@@ -2,6 +2,7 @@ import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+from store.strategies import DAY, INSTANTS, Model, as_rows, batches, names
 
 from hub.quantities import BY_NAME
 from hub.series import EMPTY
@@ -9,7 +10,6 @@ from hub.store import readings
 from hub.store.append import append
 from hub.store.arrivals import Arrival
 from hub.store.layout import DAY_MS, HOUR_MS
-from store.strategies import DAY, INSTANTS, Model, as_rows, batches, names
 
 START = DAY * DAY_MS
 edges = st.one_of(st.sampled_from(INSTANTS), st.sampled_from([0, START - 1, START + 3 * DAY_MS, 2**53])).flatmap(
@@ -41,6 +41,29 @@ def stored(connection, *days, hours=(0, 6, 23), **values):
     for day in days:
         rows = {START + day * DAY_MS + hour * HOUR_MS: values or {"uptime": float(hour)} for hour in hours}
         append(connection, [Arrival(1, START, rows)])
+
+
+def test_a_sealed_day_between_two_that_are_not_comes_in_its_place(scratch):
+    with scratch() as connection:
+        stored(connection, 1)
+        readings.seal(connection, 1, START + 2 * DAY_MS)
+        stored(connection, 0, 2)
+        found = readings.read(connection, 1, 0, 2**53)
+        assert found.time_ms.tolist() == [
+            START + day * DAY_MS + hour * HOUR_MS for day in range(3) for hour in (0, 6, 23)
+        ]
+        assert found.columns["uptime"].tolist() == [0.0, 6.0, 23.0] * 3
+
+
+@pytest.mark.parametrize("sealed", [False, True])
+def test_a_quantity_that_no_reading_of_the_stretch_has_is_absent(scratch, sealed):
+    with scratch() as connection:
+        stored(connection, 0, hours=[1])
+        stored(connection, 0, hours=[9], signal=-70.0)
+        if sealed:
+            readings.seal(connection, 1, START + DAY_MS)
+        assert readings.read(connection, 1, START, START + 5 * HOUR_MS).columns.keys() == {"uptime"}
+        assert readings.read(connection, 1, START + 5 * HOUR_MS, START + DAY_MS).columns.keys() == {"signal"}
 
 
 def test_a_node_without_readings(scratch):

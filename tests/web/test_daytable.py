@@ -4,10 +4,12 @@ from hub.store.inventory import Node
 from hub.web.daytable import COLUMNS, NO_PACK, headings, reason, table
 
 LONDON = ZoneInfo("Europe/London")
+NOW = 1_780_315_320_000
 NODE = Node("ridge-east", "ridge", panel_power_w=10.0)
 DAY = {
     "date": "2026-05-31",
     "pack": "R-07",
+    "end_ms": 1_780_268_400_000,
     "coverage": 0.994,
     "full_at_ms": 1_780_230_000_000,
     "charge_ah": 0.742,
@@ -27,7 +29,7 @@ DAY = {
 
 
 def cells(day, node=NODE):
-    found = table([day], node, LONDON)
+    found = table([day], node, LONDON, NOW)
     return {cell.name: (cell.text.replace("\u00a0", " "), cell.note) for cell in found.rows[0].cells}, found.notes
 
 
@@ -53,13 +55,17 @@ def test_what_is_not_known_has_its_reason_as_a_note():
 
 
 def test_the_same_reason_is_noted_once():
-    found = table([DAY, DAY | {"date": "2026-06-01"}], NODE, LONDON)
+    found = table([DAY, DAY | {"date": "2026-06-01"}], NODE, LONDON, NOW)
     assert len(found.notes) == 2
     assert [row.date for row in found.rows] == ["2026-06-01", "2026-05-31"]
 
 
 def test_a_day_that_was_seen_and_had_no_full_charge_did_not_fill():
     assert cells(DAY | {"full_at_ms": None})[0]["Full"] == ("did not fill", "")
+
+
+def test_a_day_that_is_not_over_may_still_fill():
+    assert cells(DAY | {"full_at_ms": None, "end_ms": NOW + 1, "coverage": 0.3})[0]["Full"] == ("not yet", "")
 
 
 def test_a_day_that_was_hardly_seen_is_not_judged():

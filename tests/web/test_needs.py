@@ -7,7 +7,7 @@ from hub.store.inventory import Fitting, Node, Pack, Site
 from hub.web import cautions
 from hub.web.days import Day
 from hub.web.glance import Glance, Latest
-from hub.web.needs import ASIDE_REASONS, REASONS, needs
+from hub.web.needs import ASIDE_REASONS, OFTEN, REASONS, needs
 
 NOW = 1_780_315_320_000
 MINUTE, HOUR, DAY = 60_000, 3_600_000, 86_400_000
@@ -122,6 +122,14 @@ def test_sensor_findings_name_quantity_number_and_reason():
     assert not need.urgent
 
 
+@pytest.mark.parametrize(
+    ("reason", "times", "is_told"), [("power-on", 11, False), ("power-on", 12, True), ("frozen", 1, True)]
+)
+def test_a_thermometer_that_starts_up_now_and_then_is_no_fault(reason, times, is_told):
+    found = told(replace(WELL, findings={("pack_temperature", reason): times}))
+    assert found == (["sensor-fault"] if is_told else [])
+
+
 def test_what_was_set_aside_is_counted_by_reason():
     need = only(replace(WELL, set_aside={"future": 3, "malformed": 1, "brand-new": 2}))
     assert plain(need.headline) == "6 things from ridge-east could not be used in the last 7 days."
@@ -141,7 +149,7 @@ def test_the_most_urgent_comes_first():
 
 def test_every_reason_of_screening_and_of_messages_has_words():
     # The reasons that hub/telemetry/screening.py and hub/telemetry/message.py document.
-    assert set(REASONS) == {"disconnected", "power-on", "out-of-range", "spike", "frozen", "saturated"}
+    assert set(REASONS) == set(OFTEN) == {"disconnected", "power-on", "out-of-range", "spike", "frozen", "saturated"}
     assert set(ASIDE_REASONS) >= {
         *("malformed", "unit", "not-finite", "future", "too-old", "out-of-range", "contradiction", "unknown-node"),
         *("too-large", "foreign", "line"),
@@ -153,7 +161,7 @@ def test_needs_speak_plainly():
         WELL,
         last_ms=NOW - DAY,
         latest={"pack_temperature": Latest(NOW - MINUTE, 58.0)},
-        findings={("pack_voltage", "spike"): 2},
+        findings={("pack_voltage", "spike"): 20},
         set_aside={"unit": 1},
     )
     for need in needs([everything], NOW):

@@ -48,7 +48,7 @@ def test_charges_open_to_their_evidence(shown):
     text = page(shown, "?range=7d")
     assert text.count("<details>") >= 7
     words = text_of(text)
-    assert "full: the voltage stopped rising, quite sure (0.93)" in words
+    assert "Full, quite sure (0.93); ended as the voltage stopped rising" in words
     assert "voltage drop 4.2 mV a cell" in words
 
 

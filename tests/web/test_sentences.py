@@ -108,18 +108,18 @@ def test_level_is_only_sure_at_a_full_charge():
 @pytest.mark.parametrize(
     ("ended_by", "end", "full", "text"),
     [
-        (None, None, None, "still charging"),
-        (None, None, 5, "full, and charging goes on"),
-        ("voltage-drop", 9, 5, "full: the voltage dipped from its peak"),
-        ("sun-ended", 9, None, "the sun went first"),
-        ("sun-ended", 9, 5, "full; the sun went first"),
-        ("timer", 9, None, "the charger's timer ran out"),
-        (None, 9, None, "how it ended is not known"),
-        ("something new", 9, None, "how it ended is not known"),
+        (None, None, None, "Still charging"),
+        (None, None, 5, "Full, likely (0.70); charging goes on"),
+        ("voltage-drop", 9, 5, "Full, likely (0.70); ended as the voltage dipped from its peak"),
+        ("sun-ended", 9, None, "Not full, likely (0.70); ended when the sun went"),
+        ("sun-ended", 9, 5, "Full, likely (0.70); ended when the sun went"),
+        ("timer", 9, None, "Not full, likely (0.70); ended by the charger's timer"),
+        (None, 9, None, "Not full, likely (0.70); how it ended is not known"),
+        ("something new", 9, None, "Not full, likely (0.70); how it ended is not known"),
     ],
 )
 def test_ending(ended_by, end, full, text):
-    assert sentences.ending(ended_by, end, full) == text
+    assert sentences.ending(ended_by, end, full, 0.7) == text
 
 
 def test_every_ending_of_the_export_has_words():
@@ -137,10 +137,9 @@ def test_every_ending_of_the_export_has_words():
         (None, "how sure is not known"),
         (1.0, "sure (1.00)"),
         (0.8, "quite sure (0.80)"),
-        (0.61, "likely (0.61)"),
-        (0.4, "doubtful (0.40)"),
-        (0.0, "hardly more than a guess (0.00)"),
-        (-0.1, "hardly more than a guess (-0.10)"),
+        (0.65, "likely (0.65)"),
+        (0.5, "doubtful (0.50)"),
+        (0.0, "doubtful (0.00)"),
     ],
 )
 def test_confidence(value, text):
@@ -164,7 +163,7 @@ def test_today_so_far():
     }
     assert plain(sentences.today_so_far(day)) == (
         "Today so far: 0.68 ± 0.01 Ah into the pack, 0.40 Ah out of it and 15.4 Wh from the panel, where a clear sky "
-        "offers 46 Wh in the whole day. Readings cover 54 % of the day."
+        "offers 46 Wh in the whole day. Readings cover 54 % of the day so far."
     )
     nothing = day | {"charge_ah": None, "discharge_ah": None, "panel_wh": None}
     assert plain(sentences.today_so_far(nothing)).startswith("Today so far: no figure is known.")

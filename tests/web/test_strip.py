@@ -44,8 +44,8 @@ def test_a_strip_tells_in_words_what_it_draws():
 
 def test_ends_of_charge_say_how_they_ended_and_how_sure():
     text = drawn(GLANCE)
-    assert "<title>yesterday 13:00 BST: full: the voltage dipped from its peak, sure (0.97)</title>" in text
-    assert "<title>Sat 13:00 BST: the sun went first, likely (0.70)</title>" in text
+    assert "<title>yesterday 13:00 BST. Full, sure (0.97); ended as the voltage dipped from its peak.</title>" in text
+    assert "<title>Sat 13:00 BST. Not full, likely (0.70); ended when the sun went.</title>" in text
 
 
 def test_folding_makes_the_drawing_lighter():
