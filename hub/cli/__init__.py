@@ -94,7 +94,7 @@ def main() -> None:
             raise
         click.echo(
             f"packfold: something unexpected happened ({type(error).__name__}: {error}). This is a fault in Packfold, "
-            "not yours; what was stored before is safe. Run it again with PACKFOLD_TRACE=1 to see where, and report it.",
+            "not yours; what was stored is safe. Run it again with PACKFOLD_TRACE=1 to see where, and report it.",
             err=True,
         )
         sys.exit(1)

@@ -212,6 +212,25 @@ def newest(connection: Connection, node_id: int | None = None, limit: int = 100)
     return [Aside(**row) for row in connection.execute(query).mappings()]
 
 
+def since(connection: Connection, start_ms: int, node_id: int | None = None) -> dict[str, dict[str, int]]:
+    """How many things were set aside from an instant on, by node and reason; "" stands for no node at all."""
+    a = t.set_aside.c
+    name = func.coalesce(t.node.c.name, a.node_name, "").label("node")
+    query = (
+        select(name, a.reason, func.count())
+        .select_from(t.set_aside.outerjoin(t.node, t.node.c.id == a.node_id))
+        .where(a.received_ms >= start_ms)
+        .group_by(name, a.reason)
+        .order_by(name, a.reason)
+    )
+    if node_id is not None:
+        query = query.where(a.node_id == node_id)
+    found: dict[str, dict[str, int]] = {}
+    for node, reason, number in connection.execute(query):
+        found.setdefault(node, {})[reason] = number
+    return found
+
+
 def counts(connection: Connection, node_id: int) -> dict[str, int]:
     """How many things of a node were set aside, by reason; also those that were only counted."""
     total = t.aside_total.c

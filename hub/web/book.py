@@ -6,8 +6,7 @@ is gathered beside it, so that nobody waits, and the pages say as of when it is.
 
 import logging
 import threading
-from collections import Counter, defaultdict
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 from markupsafe import Markup
@@ -25,7 +24,6 @@ FRESH_MS = 5_000
 STALE_MS = 120_000
 # Gathering must not take more than a small share of the machine: it rests a while after each time.
 REST_TIMES = 10
-ASIDE_LOOKED_AT = 1000
 # A book of more strips has wider columns, so that the page stays light.
 FINE_STRIPS = 12
 
@@ -103,16 +101,14 @@ class Book:
     def set_aside_of(self, name: str, node_id: int, now_ms: int) -> Mapping[str, int]:
         """What of a node could not be used of late, by reason, as of now."""
         with self._database.read() as connection:
-            lately = aside.newest(connection, node_id, ASIDE_LOOKED_AT)
-        return _by_node(lately, now_ms).get(name, Counter())
+            return aside.since(connection, now_ms - SPAN_MS, node_id).get(name, {})
 
     def _gather(self, now_ms: int) -> Snapshot:
         with self._database.read() as connection:
             known = inventory.load(connection)
             ids = inventory.node_ids(connection)
             presence = intake.presence_of(connection)
-            lately = aside.newest(connection, None, ASIDE_LOOKED_AT)
-        set_aside = _by_node(lately, now_ms)
+            set_aside = aside.since(connection, now_ms - SPAN_MS)
         end_ms = -(-now_ms // STEP_MS) * STEP_MS
         glances = []
         for node in sorted(known.nodes, key=lambda node: (node.site, node.name)):
@@ -126,7 +122,7 @@ class Book:
                     now_ms=now_ms,
                     end_ms=end_ms,
                     presence=state[0] if state else None,
-                    set_aside=set_aside.get(node.name, Counter()),
+                    set_aside=set_aside.get(node.name, {}),
                 )
             )
         fold = 1 if len(glances) <= FINE_STRIPS else 2
@@ -137,11 +133,3 @@ class Book:
             {glance.node.name: strip(glance, end_ms - SPAN_MS, end_ms, now_ms, fold) for glance in glances},
             {name: sum(reasons.values()) for name, reasons in set_aside.items() if name not in ids},
         )
-
-
-def _by_node(lately: Sequence[aside.Aside], now_ms: int) -> dict[str, Counter[str]]:
-    found: dict[str, Counter[str]] = defaultdict(Counter)
-    for thing in lately:
-        if now_ms - thing.received_ms <= SPAN_MS:
-            found[thing.node or ""][thing.reason] += 1
-    return found
