@@ -3,6 +3,7 @@
 ``python docs/generate.py`` writes the file; ``python docs/generate.py --check`` only says whether it is up to date.
 """  # noqa: INP001 - a script beside the documents, not a package
 
+import dataclasses
 import inspect
 import re
 import sys
@@ -178,8 +179,8 @@ def _kind(hint: Any) -> str:  # noqa: ANN401 - any annotation
         parts = (choices[0],) if get_origin(hint) is list else choices
         words = " or ".join(_kind(part) for part in parts)
         return f"list of {words}" if get_origin(hint) is list else words
-    words = {bool: "true or false", int: "whole number", float: "number", str: "text"}
-    return words.get(hint, {"datetime": "instant with its zone"}.get(hint.__name__, hint.__name__))
+    plain = {"bool": "true or false", "int": "whole number", "float": "number", "str": "text"}
+    return plain.get(hint.__name__, "instant with its zone" if hint.__name__ == "datetime" else hint.__name__)
 
 
 def _value(value: object) -> str:
@@ -191,8 +192,8 @@ def _value(value: object) -> str:
 def _settings() -> Iterator[str]:
     yield "## Settings"
     yield ""
-    yield "A TOML file named with `--settings`. Every key has a default, so that no file is needed; each can come from the"
-    yield "environment as `PACKFOLD_SECTION_KEY`, such as `PACKFOLD_WEB_LISTEN`. A key that does not exist stops the hub."
+    yield "A TOML file named with `--settings`. Every key has a default, so that no file is needed; each can come from"
+    yield "the environment as `PACKFOLD_SECTION_KEY`, such as `PACKFOLD_WEB_LISTEN`. An unknown key stops the hub."
     yield ""
     defaults = Settings()
     for section, struct in get_type_hints(Settings).items():
@@ -230,7 +231,7 @@ def _command(title: str, command: click.Command, parent: click.Context) -> Itera
     yield ""
     text = inspect.cleandoc(command.help or "")
     # A paragraph that must not be wrapped begins with a backspace in click's help: here those are pieces of TOML.
-    words, _, piece = text.partition("\n\n\b\n")
+    words, _, piece = text.replace("\\b\n", "\b\n").partition("\n\n\b\n")
     yield from (words, "")
     if piece:
         yield from ("```toml", piece.replace("\n\n\b\n", "\n\n"), "```", "")
@@ -273,8 +274,8 @@ def _topics() -> Iterator[str]:
     yield from _table(("topic", "carries"), ((f"`{topic('field', '<node>', kind)}`", TOPICS[kind]) for kind in KINDS))
     yield "## Quantities"
     yield ""
-    yield "Names of SenML records, of the columns of logs and of the table `readings`. Other units of the SenML registry"
-    yield "for the same quantity, and SI prefixes in logs, are converted."
+    yield "Names of SenML records, of the columns of logs and of the table `readings`. Other units of the SenML"
+    yield "registry for the same quantity, and SI prefixes in logs, are converted."
     yield ""
     yield from _table(
         ("name", "unit", "SenML unit", "log column", "kept to", "range", "note"),
@@ -301,22 +302,22 @@ def _inventory() -> Iterator[str]:
     yield ""
     yield "TOML, loaded with `packfold inventory load`. What a file leaves out stays as it is."
     yield ""
-    kinds: tuple[tuple[type, type], ...] = (
+    kinds: tuple[tuple[type, Any], ...] = (
         (inventory_file.SiteRow, inventory.Site),
         (inventory_file.NodeRow, inventory.Node),
         (inventory_file.PackRow, inventory.Pack),
         (inventory_file.FittingRow, inventory.Fitting),
         (inventory_file.CalibrationRow, inventory.Calibration),
     )
-    common = {f: v.default for f, v in NodeSpec.__dataclass_fields__.items()}
+    common = {f.name: f.default for f in dataclasses.fields(NodeSpec)}
     for row, kept in kinds:
         yield f"### {(inspect.getdoc(row) or '').strip('.`')}"
         yield ""
         hints = get_type_hints(row, include_extras=True)
-        known = {f.name: f.default for f in kept.__dataclass_fields__.values()}
+        known = {f.name: f.default for f in dataclasses.fields(kept)}
         rows = []
         for spec in msgspec.structs.fields(row):
-            default = known.get(spec.name, None)
+            default = known.get(spec.name)
             if default is None and row is inventory_file.NodeRow:
                 default = common.get(spec.name)
             rows.append((f"`{spec.name}`", _kind(hints[spec.name]), "required" if spec.required else _value(default)))
@@ -348,8 +349,8 @@ def _mapping() -> Iterator[str]:
 def _tables() -> Iterator[str]:
     yield "## Export tables"
     yield ""
-    yield "`packfold export TABLE`, the page Export, and the interface give the same rows. Instants are RFC 3339 in UTC,"
-    yield "empty cells are figures that cannot be known. Columns are a promise: new ones come at the end."
+    yield "`packfold export TABLE`, the page “Take along” and the interface give the same rows. Instants are RFC 3339"
+    yield "in UTC, empty cells are figures that cannot be known. Columns are a promise: new ones come at the end."
     yield ""
     schemas = document("http://127.0.0.1:8740")["components"]["schemas"]
     meanings = {**{q.name: q.label.lower() for q in CATALOGUE}, **COLUMNS}
@@ -387,8 +388,8 @@ def _reasons() -> Iterator[str]:
 def _addresses() -> Iterator[str]:
     yield "## HTTP addresses"
     yield ""
-    yield "All but the login, the style and `/healthz` need a login, or a token as `Authorization: Bearer …` (made on the"
-    yield "page Export). Errors of the interface are RFC 9457 problem details; it describes itself in OpenAPI 3.1."
+    yield "All but the login, the style and `/healthz` need a login, or a token as `Authorization: Bearer …` (made on"
+    yield "the page “Take along”). Errors of the interface are RFC 9457 problem details; OpenAPI 3.1 describes it."
     yield ""
     with tempfile.TemporaryDirectory() as folder:
         database = Database(Path(folder))

@@ -8,10 +8,22 @@ from pathlib import Path
 from typing import Any, Final
 
 from hub.settings import Settings
-from hub.store import people, schema
+from hub.store import inventory, people, readings, schema
 from hub.store.engine import Database, FolderLock
 
 PARTS: Final = ("collect", "analyse", "web")
+
+# No reading of this program is older than the program; and a node's clock may lead the hub's by some time.
+PROGRAM_MS: Final = 1_767_225_600_000  # 2026-01-01T00:00:00Z
+LEAD_MS: Final = 24 * 3_600_000
+CLOCK_LOOK_S: Final = 1.0
+
+
+def earliest_now_ms(database: Database) -> int:
+    """The earliest that it can be now: a day before the newest reading, and not before this program was made."""
+    with database.read() as connection:
+        ends = [readings.bounds(connection, node_id) for node_id in inventory.node_ids(connection).values()]
+    return max([PROGRAM_MS, *(end[1] - LEAD_MS for end in ends if end is not None)])
 
 
 class Hub:
@@ -93,8 +105,37 @@ class Hub:
         self._say(broker.sentence)
         collector = Collector(database, broker, self.settings, now_ms=self._now_ms)
         self._open.callback(collector.stop)
-        collector.start()
+        self._once_the_clock_is_right(database, collector.start)
         self._status["collector"] = lambda: asdict(collector.status())
+
+    def _once_the_clock_is_right(self, database: Database, begin: Callable[[], None]) -> None:
+        """Begin now, or as soon as this machine's clock is not behind what was received before.
+
+        A board without a battery clock starts in the past until it has heard from a time server. Readings would then
+        seem to come from the future and be set aside; the broker keeps them until the clock is right.
+        """
+        floor_ms = earliest_now_ms(database)
+        if self._now_ms() >= floor_ms:
+            begin()
+            return
+        self._say(
+            "This machine's clock is behind the newest reading. Receiving waits until it is set; the broker keeps what "
+            "comes meanwhile. Set the clock, or let it follow a time server."
+        )
+        stop = threading.Event()
+
+        def wait() -> None:
+            while not stop.wait(CLOCK_LOOK_S):
+                if self._now_ms() >= floor_ms:
+                    self._say("The clock is right now: receiving begins.")
+                    begin()
+                    return
+
+        thread = threading.Thread(target=wait, name="clock", daemon=True)
+        self._open.callback(thread.join)
+        self._open.callback(stop.set)
+        self._status["clock"] = lambda: {"behind": thread.is_alive()}
+        thread.start()
 
     def _start_schedule(self, database: Database) -> None:
         from hub.jobs.schedule import Schedule

@@ -116,6 +116,40 @@ def test_from_a_nodes_message_to_figures_and_a_receipt(tmp_path, kind):
         hub.stop()
 
 
+@pytest.mark.broker
+def test_a_clock_that_starts_in_the_past_delays_receiving_and_loses_nothing(tmp_path):
+    secret = prepare(tmp_path)
+    clock = {"now": 60_000}
+    said = []
+    hub = Hub(settings(), tmp_path, parts=("collect",), say=said.append, now_ms=lambda: clock["now"])
+    hub.start()
+    try:
+        assert any("clock is behind" in line for line in said)
+        node = Node(hub.port, secret)
+        node.send(telemetry(1))
+        time.sleep(2)
+        assert not node.receipts
+        clock["now"] = now_ms()
+        # What the node sent while nobody was subscribed it sends again, as it has no receipt.
+        wait_for(lambda: any("clock is right" in line for line in said))
+        wait_for(lambda: hub.status()["collector"]["connected"])
+        node.send(telemetry(1))
+        wait_for(lambda: {"boot": 1, "sequence": 1} in node.receipts)
+        node.close()
+        assert hub.status()["collector"]["set_aside"] == 0
+    finally:
+        hub.stop()
+
+
+def test_a_hub_that_waits_for_its_clock_can_be_stopped(tmp_path):
+    prepare(tmp_path)
+    hub = Hub(settings("trial"), tmp_path, parts=("collect",), say=lambda _: None, now_ms=lambda: 60_000)
+    hub.start()
+    begun = time.monotonic()
+    hub.stop()
+    assert time.monotonic() - begun < 15
+
+
 def _days(database):
     with database.read() as connection:
         return figures.days(connection, inventory.node_id(connection, "ridge-east"))

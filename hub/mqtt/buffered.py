@@ -2,7 +2,7 @@
 
 The MQTT library reads a message in four pieces, two of them a single byte long, and sends each acknowledgement by
 itself. Each piece is a call of the system and an invitation to the other threads to take over, and together they are
-more than half of the cost of a message.
+a quarter of the cost of a message.
 """
 
 import socket

@@ -125,7 +125,7 @@ class Collector:
     def start(self) -> None:
         """Begin to receive. A broker that cannot be reached is no error: it is tried again until it can."""
         # What arrives is built and dropped a thousand times a second and has no cycles: looking for some after each 700
-        # objects, as is the default, takes a fifth of the time of a message.
+        # objects, as is the default, takes up to a fifth of the time of a message.
         self._thresholds = gc.get_threshold()
         gc.set_threshold(20_000, 20, 20)
         self._worker.start()
@@ -199,8 +199,8 @@ class Collector:
             return
         if batch is None or taken is None:
             return
-        self._acknowledge(letters)
         try:
+            self._acknowledge(letters)
             self._count(batch, taken)
             self._send_receipts(taken)
             if self._on_taken is not None:

@@ -21,6 +21,7 @@ def filled(connection):
         log = {}
         for n in range(0, 3 * 1440, 60):
             log[JUNE + n * MINUTE] = {"pack_temperature": 20.0 + n / 4000, "pack_current": 0.125, "pack_voltage": 10.5}
+        log[JUNE + 1] = {"pack_current": 0.125}
         log[JUNE + 600 * MINUTE] = {"pack_temperature": -127.0, "pack_current": 0.25}
         for n in range(1, 9):
             log[JUNE + (1430 + n) * MINUTE] = {"pack_temperature": 60.0 if n == 5 else 21.0}

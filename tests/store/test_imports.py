@@ -8,6 +8,7 @@ from hub.store import aside, imports, intake, readings
 from hub.store.append import append
 from hub.store.arrivals import Arrival
 from hub.store.layout import DAY_MS
+from hub.store.opened import OpenedDay
 from hub.telemetry.message import Message
 
 AT = DAY * DAY_MS
@@ -73,6 +74,8 @@ def test_each_import_takes_only_its_own(scratch, sealed):
             readings.seal(connection, 1, AT + DAY_MS)
         assert imports.undo(connection, first, 9) == 0
         assert stored(connection)[AT] == {"pack_current": 10_000, "uptime": 7000}
+        day = OpenedDay(connection, 1, DAY, sealed=sealed)
+        assert [day.of_import(number) for number in (first, second, third)] == [set(), {AT}, {AT, AT + 1}]
         assert imports.undo(connection, third, 9) == 1
         assert stored(connection) == {AT: {"pack_current": 10_000}}
         assert imports.undo(connection, second, 9) == 1
