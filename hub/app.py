@@ -17,6 +17,10 @@ PARTS: Final = ("collect", "analyse", "web")
 PROGRAM_MS: Final = 1_767_225_600_000  # 2026-01-01T00:00:00Z
 LEAD_MS: Final = 24 * 3_600_000
 CLOCK_LOOK_S: Final = 1.0
+CLOCK_BEHIND: Final = (
+    "This machine's clock is behind the newest reading. Receiving waits until it is set; the broker keeps what comes "
+    "meanwhile. Set the clock, or let it follow a time server."
+)
 
 
 def earliest_now_ms(database: Database) -> int:
@@ -118,10 +122,7 @@ class Hub:
         if self._now_ms() >= floor_ms:
             begin()
             return
-        self._say(
-            "This machine's clock is behind the newest reading. Receiving waits until it is set; the broker keeps what "
-            "comes meanwhile. Set the clock, or let it follow a time server."
-        )
+        self._say(CLOCK_BEHIND)
         stop = threading.Event()
 
         def wait() -> None:
@@ -134,7 +135,7 @@ class Hub:
         thread = threading.Thread(target=wait, name="clock", daemon=True)
         self._open.callback(thread.join)
         self._open.callback(stop.set)
-        self._status["clock"] = lambda: {"behind": thread.is_alive()}
+        self._status["clock"] = lambda: {"problem": CLOCK_BEHIND if thread.is_alive() else ""}
         thread.start()
 
     def _start_schedule(self, database: Database) -> None:

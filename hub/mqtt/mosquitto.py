@@ -21,7 +21,7 @@ from hub.mqtt.logins import Logins, folder, leave_for_selfcheck
 from hub.mqtt.rights import HUB_USER
 from hub.settings import Broker
 
-PLACES: Final = ("/usr/sbin", "/usr/local/sbin", "/sbin", "/opt/homebrew/sbin")
+PLACES: Final = ("/usr/sbin", "/usr/local/sbin", "/sbin")
 
 # A broker of a hub that was killed saves what it holds before it gives the port back.
 PORT_PATIENCE_S: Final = 5.0

@@ -28,7 +28,8 @@ def hub_needs(status: Mapping[str, Any]) -> list[Need]:
             "The hub does not receive as it should.",
             str(problem),
         )
-        for problem in collector.get("problems") or ()
+        for problem in (*(collector.get("problems") or ()), (status.get("clock") or {}).get("problem"))
+        if problem
     ]
     failures = analysis.get("failures_in_a_row") or 0
     if failures:

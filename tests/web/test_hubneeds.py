@@ -35,3 +35,9 @@ def test_it_stands_on_the_overview_without_a_link(hub):
     assert "The hub does not receive as it should." in page
     assert html.escape("The <b>broker</b> is gone.") in page
     assert 'href="/nodes/"' not in page
+
+
+def test_a_clock_that_is_behind_is_a_need_until_it_is_right():
+    (need,) = hub_needs({"clock": {"problem": "Set the clock."}})
+    assert need.kind == "receiving"
+    assert hub_needs({"clock": {"problem": ""}}) == []
