@@ -79,9 +79,9 @@ def _places(connection: Connection, arrivals: Sequence[Arrival]) -> dict[int, _P
         if wanted:
             first, last = min(wanted), max(wanted)
             rows, blocks = connection.exec_driver_sql(
-                "SELECT EXISTS (SELECT 1 FROM reading WHERE node_id = ?1 AND time_ms BETWEEN ?2 AND ?3), "
-                "EXISTS (SELECT 1 FROM reading_block WHERE node_id = ?1 AND utc_day BETWEEN ?4 AND ?5)",
-                (node_id, first, last, first // DAY_MS, last // DAY_MS),
+                "SELECT EXISTS (SELECT 1 FROM reading WHERE node_id = ? AND time_ms BETWEEN ? AND ?), "
+                "EXISTS (SELECT 1 FROM reading_block WHERE node_id = ? AND utc_day BETWEEN ? AND ?)",
+                (node_id, first, last, node_id, first // DAY_MS, last // DAY_MS),
             ).one()
             places[node_id] = _Place(
                 _sealed_days(connection, node_id, first, last) if blocks else set(),

@@ -2,7 +2,7 @@
 
 Facts from published safety sheets and handbooks: sealed nickel-metal-hydride cells vent hydrogen and oxygen when
 overcharged, reversed or shorted (maker's safety sheets); makers end a charge between 45 °C and 55 °C and none above
-60 °C (Panasonic's charge handbook for these cells; values from the project's dossier, section 2.3 and 9).
+60 °C (Panasonic's charge handbook for these cells).
 """
 
 LOCAL_RULES = "Local codes and licensed practice come first, and a reading from afar is no protection."

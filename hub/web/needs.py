@@ -9,11 +9,11 @@ from hub.web.glance import Glance, Latest
 from hub.web.sentences import is_silent, never_filled
 from hub.web.words import HOUR_MS, count, duration, figure, listed, when
 
-# End of the makers' charging range, and the highest of the usual cut-offs (dossier, section 2.3: Panasonic's charge
-# handbook, Battery University article 410).
+# End of the makers' charging range, and the highest of the usual cut-offs (Panasonic's charge handbook for these
+# cells; Battery University, article 410).
 HOT_C = 45.0
 VERY_HOT_C = 55.0
-# Continuous low-rate charge that makers allow, in It (dossier, section 2.2).
+# Continuous low-rate charge that makers allow, in It (one maker's sheet: 0.05 to 0.1; others less).
 TRICKLE_IT = 0.05
 # A value older than this tells nothing about now.
 PRESENT_MS = HOUR_MS

@@ -421,7 +421,7 @@ def test_a_hub_that_is_killed_under_load_loses_nothing_that_was_published(mosqui
     def publish() -> None:
         nonlocal sent
         while not enough.is_set() and sent < 10_000:
-            for _ in range(25):
+            for _ in range(10):
                 sent += 1
                 east.post(pack(sent))
             time.sleep(0.02)
