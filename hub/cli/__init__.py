@@ -57,7 +57,7 @@ class Commands(click.Group):
 )
 @click.pass_context
 def cli(context: click.Context, settings: Path | None, data: Path | None) -> None:
-    r"""Keep solar-charged NiMH packs alive: store what their nodes send, and say how they are.
+    """Keep solar-charged NiMH packs alive: store what their nodes send, and say how they are.
 
     \b
     First steps:
@@ -68,7 +68,7 @@ def cli(context: click.Context, settings: Path | None, data: Path | None) -> Non
       packfold run                           receive, compute, show
 
     Every command explains itself with --help. Exit codes: 0 done, 1 the work failed, 2 wrong use.
-    """
+    """  # noqa: D301 - click's mark
     context.obj = Context(settings, data)
 
 

@@ -21,7 +21,7 @@ def inventory() -> None:
 @format_option
 @click.pass_obj
 def load(context: Context, file: Path, dry_run: bool, form: str) -> None:
-    r"""Load an inventory FILE (TOML). Loading it again changes nothing.
+    """Load an inventory FILE (TOML). Loading it again changes nothing.
 
     What the file leaves out stays as it is. A fitting that is still open ends where the next one of the same pack or
     node begins. The changes are shown before they are made.
@@ -55,7 +55,7 @@ def load(context: Context, file: Path, dry_run: bool, form: str) -> None:
     pack = "R-07"
     node = "ridge-east"
     start = 2026-03-01T09:00:00Z
-    """
+    """  # noqa: D301 - click's mark
     rows = inventory_file.read_file(file)
     with context.database() as database:
         with database.read() as connection:
