@@ -22,6 +22,7 @@ _UNITS = {
     "_wh": "Wh",
     "_ah": "Ah",
     "_v": "V",
+    "_a": "A",
     "_c": "°C",
     "_it": "It, multiples of the reference test current",
     "_s": "s",

@@ -1,5 +1,17 @@
 import socket
 
+import pytest
+
+
+@pytest.fixture(autouse=True)
+def free_ports(monkeypatch):
+    """The usual ports may be in use on the machine that runs the tests."""
+    with socket.socket() as one, socket.socket() as other:
+        for taken in (one, other):
+            taken.bind(("127.0.0.1", 0))
+        monkeypatch.setenv("PACKFOLD_BROKER_PORT", str(one.getsockname()[1]))
+        monkeypatch.setenv("PACKFOLD_WEB_LISTEN", f"127.0.0.1:{other.getsockname()[1]}")
+
 
 def by_subject(document):
     return {row["subject"]: row for row in document}

@@ -133,3 +133,22 @@ def test_contradictions_are_handed_out_for_free_places_only_the_first_and_its_eq
         ]
         assert counts(connection, 1) == {"contradiction": 3, "unit": 1}
         assert aside.take_contradictions(connection, 2, {(51, "uptime")}) == []
+
+
+def test_what_was_set_aside_of_late_is_counted_by_node_and_reason(scratch):
+    with scratch() as connection:
+        for received_ms, node_id, name, reason in (
+            (10, 1, None, "unit"),
+            (20, 1, None, "unit"),
+            (20, 1, None, "future"),
+            (20, None, "stranger", "unknown-node"),
+            (20, None, None, "malformed"),
+        ):
+            origin = aside.Origin("mqtt", "field/x/telemetry", node_id, name, received_ms)
+            aside.keep(connection, origin, [Remark(reason, f"A sentence at {received_ms}.")])
+        assert aside.since(connection, 15) == {
+            "node-1": {"unit": 1, "future": 1},
+            "stranger": {"unknown-node": 1},
+            "": {"malformed": 1},
+        }
+        assert aside.since(connection, 0, 1) == {"node-1": {"unit": 2, "future": 1}}
