@@ -56,7 +56,7 @@ def today_so_far(day: Row | None) -> str:
             parts.append(f"{number(day[key], 2)}{margin}{NBSP}Ah {words}")
     if day["panel_wh"] is not None:
         sky = day["clear_sky_wh"]
-        offered = f", where a clear sky offers {figure(sky, 'Wh', 0)} in the whole day" if sky is not None else ""
+        offered = f", where a clear sky would have offered {figure(sky, 'Wh', 0)}" if sky is not None else ""
         parts.append(f"{figure(day['panel_wh'], 'Wh', 1)} from the panel{offered}")
     told = f": {listed(parts)}" if parts else ": no figure is known"
     return f"Today so far{told}. Readings cover {percent(day['coverage'])} of the day so far."

@@ -163,7 +163,7 @@ def test_today_so_far():
     }
     assert plain(sentences.today_so_far(day)) == (
         "Today so far: 0.68 ± 0.01 Ah into the pack, 0.40 Ah out of it and 15.4 Wh from the panel, where a clear sky "
-        "offers 46 Wh in the whole day. Readings cover 54 % of the day so far."
+        "would have offered 46 Wh. Readings cover 54 % of the day so far."
     )
     nothing = day | {"charge_ah": None, "discharge_ah": None, "panel_wh": None}
     assert plain(sentences.today_so_far(nothing)).startswith("Today so far: no figure is known.")
