@@ -201,6 +201,19 @@ def test_the_lock_names_no_place():
     assert text.startswith("# ")
 
 
+@pytest.mark.parametrize(
+    "path", [*sorted((ROOT / "deploy").iterdir()), ROOT / ".ci" / "run"], ids=lambda path: path.name
+)
+def test_what_installs_names_no_place_and_no_registry(path):
+    """Where this checkout lies and where packages come from is for each machine to say."""
+    text = path.read_text(encoding="utf-8")
+    assert str(ROOT) not in text
+    assert (
+        re.search(r"[a-z]+://|--(?:extra-)?index-url|--find-links|--trusted-host|PIP_INDEX|/home/|/Users/", text)
+        is None
+    )
+
+
 def commands(command=cli, trail=()):
     """Every command with the words that lead to it."""
     yield trail, command
@@ -224,6 +237,43 @@ def test_every_command_explains_itself(trail, command):
     # click's mark for a paragraph that is not to be wrapped never reaches a reader
     assert "\\b" not in found.output
     assert "\b" not in found.output
+
+
+def test_the_reference_has_every_command_with_all_its_options():
+    text = (ROOT / "docs" / "reference.md").read_text(encoding="utf-8")
+    for trail, command in commands():
+        title = " ".join(("### packfold", *trail)) if trail else "## Commands"
+        begin = re.search(rf"^{re.escape(title)}(?: [^a-z\n].*)?$", text, re.MULTILINE)
+        assert begin, title
+        part = text[begin.end() :].partition("\n##")[0]
+        for option in command.params:
+            if isinstance(option, click.Option) and option.name != "version":
+                assert all(name in part for name in option.opts), (title, option.opts)
+
+
+def test_the_script_for_the_reference_writes_the_same_bytes_everywhere_and_tells_when_they_are_stale(tmp_path):
+    """A copy of it writes beside itself: with another width of the terminal, home, language, zone and hash seed."""
+    script = shutil.copy(ROOT / "docs" / "generate.py", tmp_path)
+    kept = {name: value for name, value in os.environ.items() if not name.startswith(("PACKFOLD_", "LC_"))}
+    odd = {"COLUMNS": "40", "HOME": str(tmp_path), "LANG": "C", "TZ": "Asia/Kathmandu", "PYTHONHASHSEED": "7"}
+
+    def run(*arguments):
+        return subprocess.run(
+            [sys.executable, script, *arguments],
+            cwd=tmp_path,
+            env={**kept, **odd, "PYTHONPATH": str(ROOT)},
+            capture_output=True,
+            text=True,
+            check=False,
+        )
+
+    stale = run("--check")
+    assert stale.returncode == 1, stale.stderr
+    assert stale.stderr == "docs/reference.md is not up to date. Run: python docs/generate.py\n"
+    assert not (tmp_path / "reference.md").exists()
+    assert run().returncode == 0
+    assert (tmp_path / "reference.md").read_bytes() == (ROOT / "docs" / "reference.md").read_bytes()
+    assert run("--check").returncode == 0
 
 
 def test_the_help_of_inventory_load_holds_a_file_to_start_from():

@@ -6,6 +6,7 @@ from pathlib import Path
 import click
 
 from hub.cli.common import Context, format_option, now_ms, report
+from hub.jobs.enrolment import take_in
 from hub.store import inventory as store_inventory
 from hub.store import inventory_change, inventory_file
 
@@ -24,7 +25,7 @@ def load(context: Context, file: Path, dry_run: bool, form: str) -> None:
     """Load an inventory FILE (TOML). Loading it again changes nothing.
 
     What the file leaves out stays as it is. A fitting that is still open ends where the next one of the same pack or
-    node begins. The changes are shown before they are made.
+    node begins. The changes are shown before they are made. What a new node sent before it was known is taken in.
 
     \b
     [[site]]
@@ -67,8 +68,12 @@ def load(context: Context, file: Path, dry_run: bool, form: str) -> None:
         if not dry_run and planned:
             with database.write() as connection:
                 inventory_change.apply(connection, rows, who="command line", now_ms=now_ms())
+        taken = {} if dry_run else take_in(database)
+        if form == "text":
+            for name, number in taken.items():
+                click.echo(f"taken in, from before {name} was known: {number} reading{'s' if number != 1 else ''}")
     last = "nothing to change" if not planned else "nothing was changed (dry run)" if dry_run else "done"
-    report(form, {"dry_run": dry_run, "changes": [asdict(c) for c in planned]}, [last])
+    report(form, {"dry_run": dry_run, "changes": [asdict(c) for c in planned], "taken_in": taken}, [last])
 
 
 @inventory.command()

@@ -122,6 +122,40 @@ def _count(connection: Connection, origin: Origin, added: Mapping[str, int]) -> 
     return before
 
 
+@dataclass(frozen=True, slots=True)
+class Waiting:
+    """A whole message of a node that was not enrolled when it came."""
+
+    id: int
+    topic: str
+    received_ms: int
+    payload: bytes
+
+
+def waiting(connection: Connection, name: str, limit: int = 500) -> list[Waiting]:
+    """Telemetry under a name nobody was enrolled as, oldest first; messages kept only in part are left out."""
+    a = t.set_aside.c
+    query = (
+        select(a.id, a.origin.label("topic"), a.received_ms, a.payload)
+        .where(
+            a.node_id.is_(None),
+            a.node_name == name,
+            a.reason == "unknown-node",
+            a.origin.endswith("/telemetry", autoescape=True),
+            func.length(a.payload) < PAYLOAD_BYTES_KEPT,
+        )
+        .order_by(a.id)
+        .limit(limit)
+    )
+    return [Waiting(**row) for row in connection.execute(query).mappings()]
+
+
+def forget(connection: Connection, ids: Collection[int]) -> None:
+    """Forget what was set aside and is in use now."""
+    for part in in_parts(ids):
+        _forget(connection, t.set_aside.c.id.in_(part))
+
+
 def forget_import(connection: Connection, import_id: int) -> None:
     """Forget what was set aside of an import that is taken back."""
     _forget(connection, t.set_aside.c.import_id == import_id)
