@@ -24,6 +24,7 @@ from hub.store.engine import Database
 from hub.store.export import TABLES
 from hub.telemetry.logmapping import ColumnMapping, LogMapping, TimeMapping
 from hub.telemetry.topics import KINDS, topic
+from hub.telemetry.units import SENML
 from hub.web.factory import create_app
 from hub.web.openapi import document
 
@@ -37,7 +38,7 @@ QUANTITY_NOTES = {
     "charge_target": "what a regulating charger aims at",
     "charge_in": "kept by the node, may start again at zero; reaches over gaps",
     "charge_out": "kept by the node, may start again at zero; reaches over gaps",
-    "uptime": "shows restarts; places readings of a node without a clock",
+    "uptime": "shows restarts",
 }
 
 TOPICS = {
@@ -117,6 +118,80 @@ SCREENED = {
     "spike": "one value far from both its neighbours",
     "frozen": "the same value for long while its companions moved",
     "saturated": "a current at the end of the sensor's range: used, and known to be at least that",
+}
+
+
+INVENTORY = {
+    "site": {
+        "name": "what the site is called",
+        "latitude": "degrees, north positive",
+        "longitude": "degrees, east positive",
+        "altitude_m": "above the sea, for the clear sky",
+        "timezone": "where its days begin and end, such as `Europe/London`",
+        "horizon_notes": "what shades it; kept for people, not used in figures",
+    },
+    "node": {
+        "name": "as in its topics",
+        "site": "where it stands",
+        "interval_s": "usual time between two readings; the gap limit follows from it",
+        "current_sensing": "`net`: the sensor sees all current of the pack; `charge-only`: it does not see the load",
+        "standing_load_a": "load of a node that neither sees nor measures it; 0: not known",
+        "panel_power_w": "rated power of the panel; with the next two: clear-sky energy",
+        "panel_tilt_deg": "from horizontal",
+        "panel_azimuth_deg": "clockwise from north, 180 is south",
+        "panel_temperature_coefficient": "change of the panel's power a kelvin; empty: -0.004",
+        "current_gain_error": "of the current sensors, as a share",
+        "current_offset_a": "of the current sensors",
+        "voltage_gain_error": "of the voltage, as a share",
+        "temperature_error_c": "of the thermometers",
+        "current_full_scale_a": "end of the current sensors' range; from there a current is “at least”",
+        "integration": "`trapezoid` for readings of the moment, `hold` for logs whose rows close a step",
+    },
+    "pack": {
+        "label": "as it is written on the pack",
+        "cells_in_series": "in one string",
+        "rated_capacity_ah": "of the whole pack",
+        "designation": "of its cells, as IEC 61951-2 writes it",
+        "cells_in_parallel": "strings side by side",
+        "commissioned": "when it came into use",
+    },
+    "fitting": {
+        "pack": "its label",
+        "node": "its name",
+        "start": "from when the pack is in the node",
+        "end": "until when; empty: still",
+    },
+    "calibration": {
+        "node": "its name",
+        "quantity": "one of the quantities above",
+        "start": "from when it holds",
+        "gain": "the reading times this",
+        "offset": "plus this, in the quantity's unit",
+        "note": "how it was found",
+    },
+}
+
+MAPPING = {
+    "time": "where the time of a row comes from",
+    "columns": "the columns to take; all others are left out",
+    "header": "whether the first line of the data names the columns",
+    "delimiter": "between two cells",
+    "decimal": "the decimal mark",
+    "skip_until": "what the first line of the data starts with",
+    "skip_until_last": "whether the last such line counts",
+    "column": "number from 1, name, or a list of both",
+    "format": "`rfc3339`, `unix`, `unix-ms` or a pattern of `strptime`",
+    "timezone": "of times without an offset, such as `Europe/London`",
+    "utc_offset": "of times without an offset, such as `+01:00`",
+    "rule": "tells the two passes of a repeated hour apart by the order of rows",
+    "start": "of a log without times, RFC 3339",
+    "step_s": "between two rows of a log without times",
+    "quantity": "one of the quantities above",
+    "number": "of the column, from 1",
+    "name": "of the column in the header",
+    "unit": "in which the log has it; empty: the quantity's own",
+    "scale": "the cell times this",
+    "offset": "plus this",
 }
 
 
@@ -278,12 +353,13 @@ def _topics() -> Iterator[str]:
     yield "registry for the same quantity, and SI prefixes in logs, are converted."
     yield ""
     yield from _table(
-        ("name", "unit", "SenML unit", "log column", "kept to", "range", "note"),
+        ("name", "unit", "SenML unit", "also read", "log column", "kept to", "range", "note"),
         (
             (
                 f"`{q.name}`",
                 q.unit,
                 f"`{q.senml_unit}`" if q.senml_unit else "",
+                ", ".join(f"`{unit}`" for unit in SENML[q.unit] if unit != q.senml_unit),
                 f"`{q.column}`",
                 f"{1 / q.scale:.{q.decimals}f}",
                 f"{q.low:g} to {q.high:g}",
@@ -311,8 +387,10 @@ def _inventory() -> Iterator[str]:
     )
     common = {f.name: f.default for f in dataclasses.fields(NodeSpec)}
     for row, kept in kinds:
-        yield f"### {(inspect.getdoc(row) or '').strip('.`')}"
+        title = (inspect.getdoc(row) or "").strip(".`")
+        yield f"### {title}"
         yield ""
+        meanings = INVENTORY[title.strip("[]")]
         hints = get_type_hints(row, include_extras=True)
         known = {f.name: f.default for f in dataclasses.fields(kept)}
         rows = []
@@ -320,8 +398,9 @@ def _inventory() -> Iterator[str]:
             default = known.get(spec.name)
             if default is None and row is inventory_file.NodeRow:
                 default = common.get(spec.name)
-            rows.append((f"`{spec.name}`", _kind(hints[spec.name]), "required" if spec.required else _value(default)))
-        yield from _table(("key", "type", "default"), rows)
+            stated = "required" if spec.required else _value(default)
+            rows.append((f"`{spec.name}`", _kind(hints[spec.name]), stated, meanings[spec.name]))
+        yield from _table(("key", "type", "default", "meaning"), rows)
     yield "From its `start` to the next calibration of the same quantity, a value is the reading times `gain` plus"
     yield "`offset`. Errors of a node's sensors are standard uncertainties (k = 1)."
     yield ""
@@ -342,8 +421,9 @@ def _mapping() -> Iterator[str]:
         for spec in msgspec.structs.fields(struct):
             inner = {"time": "table, see below", "columns": "list of tables, see below"}
             kind = inner[spec.name] if struct is LogMapping and spec.name in inner else _kind(hints[spec.name])
-            rows.append((f"`{spec.name}`", kind, "required" if spec.required else _value(spec.default)))
-        yield from _table(("key", "type", "default"), rows)
+            stated = "required" if spec.required else _value(spec.default)
+            rows.append((f"`{spec.name}`", kind, stated, MAPPING[spec.name]))
+        yield from _table(("key", "type", "default", "meaning"), rows)
 
 
 def _tables() -> Iterator[str]:

@@ -4,8 +4,10 @@ Its limits: it serves this machine only; it speaks MQTT 3.1.1, so that a node on
 everything in memory, so that messages the hub has not stored when it ends are gone; a message that the hub does not
 acknowledge within five seconds (a busy disk is enough) or before its connection breaks is dropped; it bounds neither
 queues nor the size of a message; a program on this machine that knows no login can still disturb a session by taking
-its name; and it takes some thousand messages a second at most. A node that keeps its readings until the receipt loses
-nothing by any of this; one that does not, may. Mosquitto has none of these limits.
+its name; a node that falls silent with its connection open stays "online", as keep-alive is not enforced; what was
+published to be kept (presence) reaches every login; and it takes some thousand messages a second at most. A node that
+keeps its readings until the receipt loses none by any of this; one that does not, may. Mosquitto has none of these
+limits.
 """
 
 import asyncio

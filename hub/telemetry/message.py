@@ -19,7 +19,7 @@ class Remark:
     ----------
     reason
         Short stable code: ``malformed``, ``unit``, ``not-finite``, ``future``, ``too-old``, ``out-of-range``,
-        ``contradiction``, ``unknown-node``, ``too-large``, ``foreign``, ``line``.
+        ``contradiction``, ``unknown-node``, ``too-large``, ``line``.
     detail
         One sentence with what to do.
     time_ms

@@ -208,7 +208,6 @@ ASIDE_REASONS = {
     "contradiction": "contradicts what is stored",
     "unknown-node": "from a node nobody knows",
     "too-large": "too large",
-    "foreign": "not for this hub",
     "line": "lines of a log that could not be read",
 }
 

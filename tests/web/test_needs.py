@@ -152,7 +152,7 @@ def test_every_reason_of_screening_and_of_messages_has_words():
     assert set(REASONS) == set(OFTEN) == {"disconnected", "power-on", "out-of-range", "spike", "frozen", "saturated"}
     assert set(ASIDE_REASONS) >= {
         *("malformed", "unit", "not-finite", "future", "too-old", "out-of-range", "contradiction", "unknown-node"),
-        *("too-large", "foreign", "line"),
+        *("too-large", "line"),
     }
 
 
