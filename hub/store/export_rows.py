@@ -13,6 +13,7 @@ from typing import Any
 
 from sqlalchemy import Connection
 
+from hub.battery.throughput import throughput
 from hub.errors import UsageError
 from hub.quantities import CATALOGUE, NAMES
 from hub.store import figures, inventory, measured, readings
@@ -303,20 +304,16 @@ def _throughput(context: _Context, _after: Key | None) -> Iterator[tuple[Key, Ro
         if wanted is not None and label not in wanted:
             continue
         rated = context.inventory.pack(label).rated_capacity_ah
-        by_date: dict[str, float] = {}
-        for day in figures.pack_days(context.connection, context.pack_ids[label]):
-            by_date[day["date"]] = by_date.get(day["date"], 0.0) + day["discharge_ah"]
-        total = 0.0
-        for date, discharge_ah in sorted(by_date.items()):
-            total += discharge_ah
-            if (since is None or date >= since) and (until is None or date <= until):
+        days = figures.pack_days(context.connection, context.pack_ids[label])
+        for row in throughput(((day["date"], day["discharge_ah"]) for day in days), rated):
+            if (since is None or row.date >= since) and (until is None or row.date <= until):
                 yield (
-                    (label, date),
+                    (label, row.date),
                     {
                         "pack": label,
-                        "date": date,
-                        "discharge_ah": _rounded(discharge_ah),
-                        "equivalent_full_cycles": _rounded(total / rated),
+                        "date": row.date,
+                        "discharge_ah": _rounded(row.discharge_ah),
+                        "equivalent_full_cycles": _rounded(row.equivalent_full_cycles),
                     },
                 )
 

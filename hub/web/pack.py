@@ -6,6 +6,7 @@ from zoneinfo import ZoneInfo
 
 from flask import Blueprint, render_template
 
+from hub.battery.throughput import equivalent_full_cycles
 from hub.errors import InventoryError
 from hub.store import figures, inventory
 from hub.store.inventory import Fitting, Inventory, Pack
@@ -93,7 +94,7 @@ def _life(days: Sequence[Row], pack: Pack) -> dict[str, Any] | None:
     discharged = sum(day["discharge_ah"] for day in days)
     return {
         "discharge_ah": discharged,
-        "cycles": discharged / pack.rated_capacity_ah,
+        "cycles": equivalent_full_cycles(discharged, pack.rated_capacity_ah),
         "first": days[0]["date"],
         "last": max(day["date"] for day in days),
         "days": len({day["date"] for day in days}),
