@@ -3,6 +3,7 @@
 import ast
 import contextlib
 import importlib
+import itertools
 import json
 import os
 import re
@@ -27,6 +28,7 @@ from hub.store import inventory_file
 from hub.store.export import TABLES
 from hub.telemetry import senml
 from hub.telemetry.logmapping import mapping_from
+from hub.telemetry.nodelog import read_log
 
 ROOT = Path(__file__).parents[1]
 DOCUMENTS = [ROOT / "README.md", *sorted((ROOT / "docs").glob("*.md"))]
@@ -34,7 +36,8 @@ REFERENCE = ROOT / "docs" / "reference.md"
 RECEIVED_MS = 1_780_000_600_000  # ten minutes after the base time of the examples
 
 BLOCK = re.compile(r"(?:<!-- (?P<mark>[^\n]*?) -->\n)?^```(?P<kind>\w+)\n(?P<text>.*?)^```$", re.DOTALL | re.MULTILINE)
-MARKS = {"not run here", "keeps running", "typed", "file"}
+NOT_RUN = {"not run", "not run here"}
+MARKS = NOT_RUN | {"keeps running", "typed", "file"}
 
 
 @dataclass
@@ -70,8 +73,8 @@ def free_port():
         return probe.getsockname()[1]
 
 
-def script(document, folder, broker_port, web_port):
-    """All commands of a document as one script, as a person would type them into two terminals."""
+def script(document, folder):
+    """All commands of a document as written, in one script, as a person would type them into two terminals."""
     lines = ["set -euo pipefail"]
     running = 0
     for block in blocks(document):
@@ -79,13 +82,13 @@ def script(document, folder, broker_port, web_port):
             (folder / block.said).write_text(block.text, encoding="utf-8")
         if block.kind == "toml" and document.name == "README.md":
             (folder / "inventory.toml").write_text(block.text, encoding="utf-8")
-        if block.kind != "sh" or block.mark == "not run here":
+        if block.kind != "sh" or block.mark in NOT_RUN:
             continue
-        text = block.text.replace("-p 1883", f"-p {broker_port}").replace("127.0.0.1:8740", f"127.0.0.1:{web_port}")
+        text = block.text
         if block.mark == "keeps running":
             running += 1
             log = f"running-{running}.txt"
-            wait = f"for _ in $(seq 1200); do grep -q -- '{block.said}' {log} && break; sleep 0.1; done"
+            wait = f"for _ in $(seq 1200); do grep -qs -- '{block.said}' {log} && break; sleep 0.1; done"
             lines += [
                 f"{{ {text.rstrip()}; }} > {log} 2>&1 &",
                 wait,
@@ -104,27 +107,35 @@ def script(document, folder, broker_port, web_port):
 @pytest.mark.broker
 @pytest.mark.parametrize("document", DOCUMENTS, ids=lambda path: path.name)
 def test_its_commands_work_one_after_the_other(document, tmp_path):
-    broker_port, web_port = free_port(), free_port()
-    text = script(document, tmp_path, broker_port, web_port)
+    home, work = tmp_path / "home", tmp_path / "work"
+    work.mkdir()
+    text = script(document, work)
     if text is None:
-        assert not any(block.kind == "sh" and block.mark != "not run here" for block in blocks(document))
+        assert not any(block.kind == "sh" and block.mark not in NOT_RUN for block in blocks(document))
         return
     if "mosquitto_pub" in text and shutil.which("mosquitto_pub") is None:
         pytest.skip("mosquitto_pub is not installed; as root: apt install mosquitto-clients")
+    broker_port = free_port()
+    # The port that Mosquitto's clients take where the command names none.
+    for client in ("mosquitto_pub", "mosquitto_sub", "mosquitto_rr"):
+        file = home / ".config" / client
+        file.parent.mkdir(parents=True, exist_ok=True)
+        file.write_text(f"-p {broker_port}\n", encoding="utf-8")
     environment = {
-        "HOME": str(tmp_path),
+        "HOME": str(home),
         "PATH": f"{Path(sys.executable).parent}:{os.environ['PATH']}",
         "LANG": "C.UTF-8",
         "PYTHONPATH": str(ROOT),
         "PACKFOLD_BROKER_PORT": str(broker_port),
-        "PACKFOLD_WEB_LISTEN": f"127.0.0.1:{web_port}",
+        "PACKFOLD_WEB_LISTEN": f"127.0.0.1:{free_port()}",
+        "PACKFOLD_DATA": str(work / "data"),
     }
     # A session of its own: no terminal to ask for a password, and one signal ends all that the document left running.
     output = tmp_path / "output.txt"
     with output.open("wb") as stream:
         child = subprocess.Popen(
             ["bash", "-c", text],
-            cwd=tmp_path,
+            cwd=work,
             env=environment,
             stdin=subprocess.DEVNULL,
             stdout=stream,
@@ -136,7 +147,7 @@ def test_its_commands_work_one_after_the_other(document, tmp_path):
         finally:
             end_group(child.pid)
             child.wait()
-    logs = "".join(path.read_text(errors="replace") for path in sorted(tmp_path.glob("running-*.txt")))
+    logs = "".join(path.read_text(errors="replace") for path in sorted(work.glob("running-*.txt")))
     assert code == 0, f"{output.read_text(errors='replace')}\n{logs}"
 
 
@@ -295,8 +306,33 @@ def test_every_dependency_has_its_line_in_the_choices():
         assert f"`{name}`" in text, name
 
 
+def test_the_first_two_commands_of_the_first_page_can_be_run():
+    commands = [block.text.strip() for block in blocks(ROOT / "README.md") if block.kind == "sh"][:2]
+    assert commands == ["./deploy/quickstart", "./deploy/test"]
+    for command in commands:
+        assert os.access(ROOT / command, os.X_OK), command
+        helped = subprocess.run([ROOT / command, "--help"], capture_output=True, text=True, check=True, timeout=20)
+        assert command in helped.stdout
+
+
+@pytest.mark.parametrize("document", DOCUMENTS, ids=lambda path: path.name)
+def test_no_document_names_a_place_on_somebodys_machine(document):
+    text = document.read_text(encoding="utf-8")
+    assert not re.findall(r"(?<![\w.~-])/(?:work|root|tmp|var/tmp|home/\w+|Users/\w+)\b", text)
+
+
+def test_the_log_in_the_document_is_read_as_it_says():
+    log = next(block for block in blocks(ROOT / "docs" / "node.md") if block.said == "log.csv")
+    chunks = list(read_log(log.text.encode(), received_ms=RECEIVED_MS + 86_400_000 * 30))
+    assert sum(chunk.taken for chunk in chunks) == 3
+    assert [remark.reason for chunk in chunks for remark in chunk.set_aside] == ["line"]
+    assert not any(chunk.message.unknown for chunk in chunks)
+    moments = sorted(time_ms for chunk in chunks for time_ms in chunk.message.readings)
+    assert [b - a for a, b in itertools.pairwise(moments)] == [60_000, 60_000]
+
+
 def test_the_first_page_is_short_and_its_pictures_are_light():
-    assert len((ROOT / "README.md").read_text(encoding="utf-8").splitlines()) <= 150
+    assert len((ROOT / "README.md").read_text(encoding="utf-8").splitlines()) < 130
     pictures = list((ROOT / "docs" / "pictures").glob("*"))
     assert pictures
     for picture in pictures:

@@ -12,7 +12,7 @@ import platformdirs
 
 from hub.app import Hub
 from hub.cli.common import Context, now_ms, progress, say
-from hub.cli.running import stop_signal
+from hub.cli.running import DEMONSTRATION_MARK, stop_signal
 from hub.demo import scenario
 from hub.demo.__main__ import Order, moment
 from hub.errors import PackfoldError, UsageError
@@ -23,7 +23,6 @@ from hub.store import inventory, inventory_change, inventory_file, people
 from hub.store.engine import Database
 from hub.web.passwords import hash_password
 
-MARK = "this-is-a-demonstration"
 LOOPBACK = "127.0.0.1"
 PREFERRED_WEB_PORT = 8740
 # Live readings come every ten seconds; figures that follow within a quarter of a minute feel alive.
@@ -75,7 +74,7 @@ def demonstrate(
 def _fresh_folder(folder: Path) -> None:
     """An empty folder with our mark; whatever an earlier demonstration left is removed, nothing else ever."""
     if folder.exists():
-        if any(folder.iterdir()) and not (folder / MARK).exists():
+        if any(folder.iterdir()) and not (folder / DEMONSTRATION_MARK).exists():
             raise UsageError(
                 f"The folder {folder} holds something that is not a demonstration. Name an empty one with --data."
             )
@@ -84,7 +83,9 @@ def _fresh_folder(folder: Path) -> None:
             pass
         shutil.rmtree(folder)
     folder.mkdir(parents=True)
-    (folder / MARK).write_text("Invented nodes, packs and weather. This folder is emptied by each demonstration.\n")
+    (folder / DEMONSTRATION_MARK).write_text(
+        "Invented nodes, packs and weather. This folder is emptied by each demonstration.\n"
+    )
 
 
 def _settings(listen: str | None, broker_port: int | None) -> Settings:

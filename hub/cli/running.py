@@ -12,6 +12,9 @@ from hub.app import PARTS, Hub
 from hub.cli.common import Context, now_ms, say
 from hub.errors import UsageError
 
+# In a folder of the demonstration: it may be emptied, and a real hub must not live there.
+DEMONSTRATION_MARK = "this-is-a-demonstration"
+
 
 @click.command()
 @click.option(
@@ -30,6 +33,11 @@ def run(context: Context, only: str | None) -> None:
     for part in parts:
         if part not in PARTS:
             raise UsageError(f"There is no part “{part}”. The parts are {', '.join(PARTS)}.")
+    if (context.data / DEMONSTRATION_MARK).exists():
+        raise UsageError(
+            f"The folder {context.data} belongs to the demonstration, which empties it at its next start. "
+            "Choose another with --data."
+        )
     say(f"Data: {context.data}")
     hub = Hub(context.settings, context.data, settings_path=context.settings_path, parts=parts, say=say, now_ms=now_ms)
     with stop_signal() as stop:

@@ -3,7 +3,7 @@ import io
 
 import pytest
 
-from hub.cli.demonstration import MARK
+from hub.cli.running import DEMONSTRATION_MARK
 
 
 @pytest.mark.broker
@@ -26,7 +26,7 @@ def test_a_folder_with_something_else_in_it_is_left_alone(packfold):
     (packfold.data / "thesis.txt").write_text("years of work")
     assert "not a demonstration" in packfold("demo", code=2).err
     assert (packfold.data / "thesis.txt").read_text() == "years of work"
-    assert not (packfold.data / MARK).exists()
+    assert not (packfold.data / DEMONSTRATION_MARK).exists()
 
 
 def test_it_serves_this_machine_only(packfold):
