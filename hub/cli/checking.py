@@ -12,7 +12,7 @@ import click
 from hub.cli.common import Context, format_option, report
 from hub.errors import PackfoldError
 from hub.store import inventory, people, schema
-from hub.store.engine import Database, FolderLock, sqlite_release
+from hub.store.engine import DATABASE_NAME, Database, FolderLock, sqlite_release
 
 Verdict = Literal["good", "look", "bad"]
 
@@ -89,7 +89,7 @@ def _sqlite(_context: Context) -> Iterator[Finding]:
 
 
 def _database(context: Context) -> Iterator[Finding]:
-    if not context.settings.database.url and not (context.data / "packfold.db").exists():
+    if not context.settings.database.url and not (context.data / DATABASE_NAME).exists():
         yield Finding("database", "look", f"There is none yet in {context.data}; “packfold run” makes it.")
         return
     database = Database(context.data, context.settings.database.url)

@@ -14,7 +14,6 @@ from collections.abc import Callable
 from dataclasses import asdict, dataclass
 
 from hub.battery.day import METHOD_VERSION, Carried
-from hub.errors import InventoryError
 from hub.jobs.compute import Subject, compute, subject_of
 from hub.jobs.skies import Skies
 from hub.jobs.windows import DayWindow, windows
@@ -30,6 +29,7 @@ AFTER_MS = 15 * 60_000
 LOCK_S = 0.5
 # A UTC day is sealed once the node has sent readings this long after its end.
 SEAL_AFTER_MS = 24 * readings.HOUR_MS
+SEALED_AT_ONCE = 4
 
 
 @dataclass(slots=True)
@@ -68,9 +68,7 @@ def bring_up_to_date(
     with database.read() as connection:
         known = inventory.load(connection)
         ids = inventory.node_ids(connection)
-    if node is not None and node not in ids:
-        raise InventoryError(f"There is no node “{node}”. Known nodes: {', '.join(ids) or 'none yet'}.")
-    for name in [node] if node is not None else sorted(ids):
+    for name in [known.node(node).name] if node is not None else sorted(ids):
         _Fold(database, known, name, ids[name], since, done, progress).run()
         _seal(database, ids[name], done)
     return done
@@ -193,7 +191,7 @@ def _seal(database: Database, node_id: int, done: Done) -> None:
     before = ends[1] - SEAL_AFTER_MS
     while True:
         with database.write() as connection:
-            number = readings.seal(connection, node_id, before, most=4)
+            number = readings.seal(connection, node_id, before, most=SEALED_AT_ONCE)
         done.sealed += number
-        if number == 0:
+        if number < SEALED_AT_ONCE:
             return
